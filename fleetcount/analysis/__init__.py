@@ -1,0 +1,1 @@
+"""What the table means: growth constants, exponents, next terms. Needs only `series`."""

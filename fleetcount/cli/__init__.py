@@ -1,0 +1,1 @@
+"""What a person types: one module a command group, no logic of its own."""

@@ -1,0 +1,1 @@
+"""What is walked on: definition files and their checks, symmetry group, patch."""

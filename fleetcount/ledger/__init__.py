@@ -1,0 +1,1 @@
+"""What is remembered: schema, migrations, stores, the chain of checksums, merging into a table."""

@@ -1,0 +1,1 @@
+"""Direct enumeration: the prefixes are those of the object itself."""

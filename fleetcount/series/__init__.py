@@ -1,0 +1,1 @@
+"""What is counted: series, objects, tally, coefficient table."""
