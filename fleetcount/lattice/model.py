@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
 from fractions import Fraction
 from functools import cached_property
@@ -55,6 +56,40 @@ class Lattice:
     one_way: bool
     source: str = field(default="", compare=False)
     warnings: tuple[str, ...] = field(default=(), compare=False)
+
+    @cached_property
+    def _hash(self) -> int:
+        # No text in it: the hash of a string changes from process to process, and this one is pickled.
+        return hash((self.dimension, self.periods, self.metric, self.arcs))
+
+    def __hash__(self) -> int:
+        return self._hash
+
+    @cached_property
+    def scale(self) -> int:
+        """Least common denominator of the positions."""
+        return math.lcm(*(x.denominator for site in self.sites for x in site.at))
+
+    @cached_property
+    def metric_scale(self) -> int:
+        """Least common denominator of the metric."""
+        return math.lcm(*(x.denominator for row in self.metric for x in row))
+
+    @cached_property
+    def positions(self) -> tuple[tuple[int, ...], ...]:
+        """Positions of the sites of cell 0 in units of 1/`scale`."""
+        return tuple(tuple(int(x * self.scale) for x in site.at) for site in self.sites)
+
+    @cached_property
+    def gram(self) -> tuple[tuple[int, ...], ...]:
+        """The metric in units of 1/`metric_scale`."""
+        return tuple(tuple(int(x * self.metric_scale) for x in row) for row in self.metric)
+
+    def step(self, arc: Arc) -> tuple[int, ...]:
+        """The vector of an arc, `dimension` coordinates in units of 1/`scale`."""
+        cell = arc.cell + (0,) * (self.dimension - self.periods)
+        here, there = self.positions[arc.source], self.positions[arc.target]
+        return tuple(self.scale * c + b - a for a, b, c in zip(here, there, cell, strict=True))
 
     @cached_property
     def arms(self) -> tuple[tuple[Arc, ...], ...]:
