@@ -76,8 +76,7 @@ class Keys:
 
     def kinds(self, keys: NDArray[np.int64]) -> NDArray[np.int64]:
         """Site classes [k]."""
-        kinds: NDArray[np.int64] = keys % len(self.lattice.sites)
-        return kinds
+        return keys % len(self.lattice.sites)
 
     def cells(self, keys: NDArray[np.int64]) -> NDArray[np.int64]:
         """Cells [k, periods]."""
@@ -100,7 +99,8 @@ class Keys:
     def without(keys: NDArray[np.int64], known: NDArray[np.int64]) -> NDArray[np.int64]:
         """The keys that are not among the sorted `known`, of which there is at least one."""
         place = np.minimum(np.searchsorted(known, keys), len(known) - 1)
-        return keys[known[place] != keys]
+        unknown: NDArray[np.int64] = keys[known[place] != keys]
+        return unknown
 
 
 def _layout(lattice: Lattice, radius: int) -> tuple[list[int], list[int], int]:
