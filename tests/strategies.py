@@ -44,7 +44,7 @@ def small_lattices(draw: st.DrawFn, one_way: bool | None = None) -> Lattice:
 
 @st.composite
 def _places(draw: st.DrawFn, dimension: int, periods: int) -> list[Place]:
-    """Positions that fill the dimensions: the first sites stand one step along each axis that is no period."""
+    """Positions that fill the dimensions: the first sites stand one step along each axis without period."""
     least = dimension - periods + 1
     number = draw(st.integers(least, max(4, least)))
     denominator = draw(st.sampled_from((2, 2, 3, 4)))

@@ -38,7 +38,7 @@ def find(name_or_path: str | os.PathLike[str]) -> Lattice:
     if text not in names():
         near = _OTHER_NAMES.get(text.lower()) or difflib.get_close_matches(text.lower(), names(), 3, 0.5)
         mend = f"did you mean {' or '.join(near)}?" if near else f"known are {', '.join(names())}"
-        if Path(text + ".toml").is_file():
+        if len(text) <= 60 and Path(text + ".toml").is_file():
             mend = f"for the file write ./{text}.toml"
         raise InputError(f"no lattice called {text[:60]!r}", mend=mend)
     return _built_in(text)

@@ -138,9 +138,7 @@ def _offsets(lattice: Lattice) -> dict[int, tuple[int, ...]]:
 def _check_size(lattice: Lattice) -> None:
     bound = step_bound(lattice)
     if bound > GREATEST_STEP:
-        what = (
-            f"too large for exact sums in 64 bits: squared steps reach {bound} units, {GREATEST_STEP} at most"
-        )
+        what = f"too large for sums in 64 bits: squared steps of {bound} units, above {GREATEST_STEP}"
         mend = "use simpler fractions for metric and positions, or shorter edges"
         raise _error(lattice, "metric", what, mend)
 
