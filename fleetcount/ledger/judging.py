@@ -10,6 +10,7 @@ from fleetcount.ledger import record
 from fleetcount.ledger.record import OpeningRecord, TallyRecord
 from fleetcount.ledger.states import SETTLED, State
 from fleetcount.ledger.store import Answer, ReadingRow, UnitRow, Verdict
+from fleetcount.series import canonical
 
 MOST_NODES = 2**63 - 1
 """The ledger keeps the nodes of one unit in 64 bits."""
@@ -31,6 +32,12 @@ def read(answer: Answer) -> TallyRecord:
     return tally
 
 
+def check_definition(digest: str, text: str) -> None:
+    """A series is known by the digest of its canonical definition; TrustError if this is not it."""
+    if canonical.digest(text) != digest:
+        raise TrustError("the digest is not that of the definition", where=f"series {digest[:12]}")
+
+
 def read_opening(text: str, series: str, expected: Sequence[float]) -> OpeningRecord:
     """The record of an opening of this series; TrustError if it is none."""
     opening = OpeningRecord.parse(text)
@@ -43,6 +50,21 @@ def read_opening(text: str, series: str, expected: Sequence[float]) -> OpeningRe
         raise TrustError("a reading has at least one sum a row")
     check_expected(expected, len(opening.roots))
     return opening
+
+
+def opened_row(opening: OpeningRecord) -> ReadingRow:
+    """The reading that an opening opens."""
+    return ReadingRow(
+        series=opening.series,
+        reading=opening.reading,
+        purpose=opening.purpose,
+        method=opening.method,
+        method_version=opening.method_version,
+        lengths=opening.lengths,
+        width=opening.width,
+        opened=opening.opened,
+        finished=None,
+    )
 
 
 def check_expected(expected: Sequence[float], number: int) -> None:

@@ -79,6 +79,7 @@ class MemoryStore:
     # Series and their leases
 
     def open_series(self, digest: str, canonical: str, written: str, opened: int) -> None:
+        judging.check_definition(digest, canonical)
         with self._lock:
             self._series.setdefault(digest, _Series(SeriesRow(digest, canonical, written, opened, 0, digest)))
 
@@ -128,10 +129,7 @@ class MemoryStore:
             if new.reading in self._units:
                 raise LedgerError("a reading of this id is open already", where=f"reading {new.reading}")
             self._chain(one, opening, lease.token)
-            one.readings[new.reading] = ReadingRow(
-                new.series, new.reading, new.purpose, new.method, new.method_version, new.lengths, new.width,
-                new.opened, None,
-            )  # fmt: skip
+            one.readings[new.reading] = judging.opened_row(new)
             self._units[new.reading] = {}
             for (key, factor), nodes in zip(new.roots, expected, strict=True):
                 self._add(new.reading, key, None, factor, factor, nodes)
@@ -222,7 +220,7 @@ class MemoryStore:
             self.event(lease.series, "refused", judging.refused_text(answer, error))
             return Verdict.REFUSED
         if verdict is Verdict.DISPUTED:
-            unit.row = replace(row, disputed=True)
+            unit.row = replace(row, verdict="disputed")
             self.event(lease.series, "dispute", judging.dispute_text(tally))
         if verdict is Verdict.ACCEPTED:
             unit.accepted = self._chain(one, answer.text, answer.token)
@@ -271,7 +269,7 @@ class MemoryStore:
                 seconds=seconds,
                 machines=dict(machines),
                 engines=tuple(sorted(engines)),
-                disputed=tuple(sorted(key for key, unit in units.items() if unit.row.disputed)),
+                disputed=tuple(sorted(key for key, unit in units.items() if unit.row.verdict == "disputed")),
             )
 
     def _weight(self, units: dict[str, _Unit], unit: _Unit) -> int:
@@ -337,7 +335,9 @@ class MemoryStore:
     def _add(
         self, reading: str, key: str, parent: str | None, factor: int, weight: int, expected: float
     ) -> None:
-        row = UnitRow(reading, key, parent, factor, weight, expected, State.WAITING, False, 0, None, None)
+        row = UnitRow(
+            reading, key, parent, factor, weight, expected, State.WAITING, "unchecked", 0, None, None
+        )
         self._units[reading][key] = _Unit(row)
 
     def _chain(self, one: _Series, text: str, token: str) -> int:
@@ -355,7 +355,7 @@ def _now() -> int:
 def _share(units: list[_Unit]) -> Share:
     return Share(
         units=len(units),
-        expected=sum(unit.row.expected for unit in units),
+        expected=sum((unit.row.expected for unit in units), 0.0),
         nodes=sum(unit.tally.nodes for unit in units if unit.tally),
-        seconds=sum(unit.seconds for unit in units),
+        seconds=sum((unit.seconds for unit in units), 0.0),
     )

@@ -102,7 +102,8 @@ class ReadingRow:
 
 @dataclass(frozen=True)
 class UnitRow:
-    """A unit. `parent` is None for a root; `token` is set while it is out; `attempts` counts failures."""
+    """A unit. `parent` is None for a root; `token` is set while it is out; `attempts` counts failures;
+    `verdict` is unchecked, agreed or disputed."""
 
     reading: str
     key: str
@@ -111,7 +112,7 @@ class UnitRow:
     weight: int
     expected: float
     state: State
-    disputed: bool
+    verdict: str
     attempts: int
     last_error: str | None
     token: str | None

@@ -1,0 +1,1 @@
+"""The ledger in a database: SQLite or PostgreSQL, through the same code."""
