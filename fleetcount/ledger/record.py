@@ -204,15 +204,30 @@ def _write(name: str, number: int, fields: dict[str, object]) -> str:
     return canonical.text([name, number, fields])
 
 
-def _read(name: str, number: int, text: str, build: Callable[[dict[str, Any]], Record]) -> Record:
+def fields(text: str, name: str, number: int) -> dict[str, Any]:
+    """The fields of a record's text as JSON has them, unchecked; TrustError if it is of another format."""
     try:
-        found_name, found_number, fields = json.loads(text)
+        found_name, found_number, found = json.loads(text)
         if (found_name, found_number) != (name, number):
             raise ValueError(f"its format is {found_name!r} {found_number!r}")
-        return build(fields)
-    except (ValueError, TypeError, KeyError, AttributeError, RecursionError) as error:
-        found = f"{type(error).__name__}: {error}"
-        raise TrustError(f"not a record of format '{name}' {number} ({found[:200]})") from None
+        if not isinstance(found, dict):
+            raise TypeError("its fields have no names")
+    except (ValueError, TypeError, RecursionError) as error:
+        raise _not_a_record(name, number, error) from None
+    return found
+
+
+def _read(name: str, number: int, text: str, build: Callable[[dict[str, Any]], Record]) -> Record:
+    found = fields(text, name, number)
+    try:
+        return build(found)
+    except (ValueError, TypeError, KeyError, AttributeError) as error:
+        raise _not_a_record(name, number, error) from None
+
+
+def _not_a_record(name: str, number: int, error: Exception) -> TrustError:
+    found = f"{type(error).__name__}: {error}"
+    return TrustError(f"not a record of format '{name}' {number} ({found[:200]})")
 
 
 def _string(value: object) -> str:

@@ -5,10 +5,12 @@ from __future__ import annotations
 import hashlib
 import json
 
+_ENCODER = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
+
 
 def text(value: object) -> str:
-    """Canonical JSON: sorted keys, no spaces, no floats. Exact integers that may be big go in as decimal strings."""
-    return json.dumps(value, sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
+    """Canonical JSON: sorted keys, no spaces, no floats. Exact integers that may be big go in as text."""
+    return _ENCODER.encode(value)
 
 
 def digest(value: str) -> str:

@@ -9,11 +9,12 @@ from typing import Any, Self
 import sqlalchemy as sa
 from sqlalchemy.dialects import postgresql, sqlite
 
+from fleetcount.errors import LedgerError
 from fleetcount.ledger import judging, leasing
 from fleetcount.ledger.sql import accept as accepting
 from fleetcount.ledger.sql import lease as leases
+from fleetcount.ledger.sql import looking, schema, units
 from fleetcount.ledger.sql import merge as merging
-from fleetcount.ledger.sql import schema, units
 from fleetcount.ledger.sql.engine import Database
 from fleetcount.ledger.sql.schema import now
 from fleetcount.ledger.states import State
@@ -128,17 +129,19 @@ class SqlStore:
         with self.database.write() as connection:
             locked = leases.check(connection, lease)
             number = units.reading_id(connection, lease.series, reading)
-            units.finish(connection, number, reading, locked.now)
+            if not looking.census(connection, reading).complete:
+                raise LedgerError("units of it have no tally yet", where=f"reading {reading}")
+            units.finish(connection, number, locked.now)
 
     # Units
 
     def waiting(self, reading: str, limit: int) -> list[UnitRow]:
         with self.database.read() as connection:
-            return units.waiting(connection, reading, limit)
+            return looking.waiting(connection, reading, limit)
 
     def units(self, reading: str, *states: State, limit: int | None = None) -> list[UnitRow]:
         with self.database.read() as connection:
-            return units.find(connection, reading, states, limit)
+            return looking.find(connection, reading, states, limit)
 
     def hand_out(self, lease: Lease, reading: str, keys: Sequence[str], token: str) -> list[UnitRow]:
         with self.database.write() as connection:
@@ -181,11 +184,11 @@ class SqlStore:
 
     def census(self, reading: str) -> Census:
         with self.database.read() as connection:
-            return units.census(connection, reading)
+            return looking.census(connection, reading)
 
     def latest(self, reading: str, limit: int) -> list[Recent]:
         with self.database.read() as connection:
-            return units.latest(connection, reading, limit)
+            return looking.latest(connection, reading, limit)
 
     def merge(self, series: str, reading: str, check: bool = True) -> Merged:
         with self.database.read() as connection:

@@ -12,14 +12,14 @@ from fleetcount.errors import LedgerError
 from fleetcount.ledger import judging, record, states
 from fleetcount.ledger.record import OpeningRecord
 from fleetcount.ledger.sql.lease import Locked, note
-from fleetcount.ledger.sql.schema import readings, series, tallies, units
+from fleetcount.ledger.sql.schema import readings, series, units
 from fleetcount.ledger.states import MOVES, Move, State
-from fleetcount.ledger.store import Census, ReadingRow, Recent, Share, UnitRow
+from fleetcount.ledger.store import ReadingRow, UnitRow
 
 AT_ONCE = 500
 """Keys in one question; every database takes more variables than this."""
 
-_UNIT = [
+UNIT = [
     units.c.id,
     units.c.key,
     units.c.parent,
@@ -142,7 +142,7 @@ def new_unit(
 
 
 def unit_row(reading: str, row: Any) -> UnitRow:
-    """The value of a row of `_UNIT` columns."""
+    """The value of a row of `UNIT` columns."""
     return UnitRow(
         reading=reading,
         key=row.key,
@@ -156,34 +156,6 @@ def unit_row(reading: str, row: Any) -> UnitRow:
         last_error=row.last_error,
         token=row.token,
     )
-
-
-def find(
-    connection: sa.Connection, reading: str, chosen: Iterable[State] = (), limit: int | None = None
-) -> list[UnitRow]:
-    """Units of a reading, by key."""
-    query = (
-        sa.select(*_UNIT)
-        .join_from(units, readings)
-        .where(readings.c.reading == reading)
-        .order_by(units.c.key)
-    )
-    chosen = list(chosen)
-    if chosen:
-        query = query.where(units.c.state.in_(chosen))
-    return [unit_row(reading, row) for row in connection.execute(query.limit(limit))]
-
-
-def waiting(connection: sa.Connection, reading: str, limit: int) -> list[UnitRow]:
-    """Units that wait, the largest expected work first."""
-    number = sa.select(readings.c.id).where(readings.c.reading == reading).scalar_subquery()
-    query = (
-        sa.select(*_UNIT)
-        .where(units.c.reading == number, in_state(State.WAITING))
-        .order_by(units.c.expected.desc(), units.c.key)
-        .limit(limit)
-    )
-    return [unit_row(reading, row) for row in connection.execute(query)]
 
 
 def move(
@@ -202,7 +174,7 @@ def move(
     """
     wanted = list(dict.fromkeys(keys))
     rows: dict[str, Any] = {}
-    for row in by_key(connection, _UNIT, number, wanted, in_state(before)):
+    for row in by_key(connection, UNIT, number, wanted, in_state(before)):
         values = change(row)
         if values is not None:
             rows[row.key] = (row, values)
@@ -317,46 +289,8 @@ def readmit(connection: sa.Connection, number: int, reading: str, keys: Sequence
     )
 
 
-def census(connection: sa.Connection, reading: str) -> Census:
-    """The units of a reading by state, in one query."""
-    total = sa.func.sum
-    rows = connection.execute(
-        sa.select(
-            units.c.state,
-            sa.func.count().label("units"),
-            total(units.c.expected).label("expected"),
-            total(sa.cast(units.c.nodes, sa.Float(53))).label("nodes"),
-            total(units.c.seconds).label("seconds"),
-        )
-        .join_from(units, readings)
-        .where(readings.c.reading == reading)
-        .group_by(units.c.state)
-    )
-    found = {
-        row.state: Share(row.units, row.expected or 0.0, int(row.nodes or 0), row.seconds or 0.0)
-        for row in rows
-    }
-    return Census({state: found.get(state, Share()) for state in State})
-
-
-def finish(connection: sa.Connection, number: int, reading: str, now: int) -> None:
+def finish(connection: sa.Connection, number: int, now: int) -> None:
     """Note that a reading is finished."""
-    if not census(connection, reading).complete:
-        raise LedgerError("units of it have no tally yet", where=f"reading {reading}")
     connection.execute(
         sa.update(readings).where(readings.c.id == number, readings.c.finished.is_(None)).values(finished=now)
     )
-
-
-def latest(connection: sa.Connection, reading: str, limit: int) -> list[Recent]:
-    """The tallies of a reading that were accepted last."""
-    rows = connection.execute(
-        sa.select(units.c.key, tallies.c.machine, units.c.nodes, units.c.seconds, tallies.c.accepted)
-        .select_from(readings)
-        .join(tallies, tallies.c.series == readings.c.series)
-        .join(units, sa.and_(units.c.id == tallies.c.unit, units.c.reading == readings.c.id))
-        .where(readings.c.reading == reading)
-        .order_by(tallies.c.number.desc())
-        .limit(limit)
-    )
-    return [Recent(row.key, row.machine, row.nodes, row.seconds, row.accepted) for row in rows]
