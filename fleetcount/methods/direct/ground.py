@@ -1,0 +1,154 @@
+"""What a search needs besides its prefix: the patch, the symmetry states and the kernel, made once a reach."""
+
+from __future__ import annotations
+
+import threading
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import lru_cache
+from math import lcm
+from typing import Any
+
+import numpy as np
+
+from fleetcount.errors import InternalError
+from fleetcount.lattice.model import Lattice
+from fleetcount.lattice.patch import Patch, build, distance_to
+from fleetcount.methods import compiled
+from fleetcount.methods.direct import kernels
+from fleetcount.methods.direct.symmetry_states import SymmetryStates, symmetry_states, without_symmetry
+from fleetcount.series.definition import Series
+
+Array = np.ndarray[Any, np.dtype[Any]]
+
+_building = threading.Lock()
+START = 1
+"""The start's number in every patch."""
+
+
+@dataclass(frozen=True)
+class Ground:
+    """Read-only arrays shared by all searches of one series from one start, up to one reach.
+
+    `images` and `onward` are the symmetry states as int32 arrays [states, kinds, arms].
+    """
+
+    series: Series
+    start: int
+    least: bool
+    top: int
+    patch: Patch
+    states: SymmetryStates
+    images: Array
+    onward: Array
+    run: Callable[..., bool]
+
+    @property
+    def arms(self) -> int:
+        return int(self.patch.next.shape[1])
+
+    def home(self, first_arm: int) -> Array:
+        """Least number of steps from each site back to the start, int32 [sites + 1]; see `polygon_kernel`.
+
+        Rooted at the least site of an undirected lattice each polygon is run through in one sense only: it comes
+        home by a greater arm than it left by.
+        """
+        patch = self.patch
+        if self.series.lattice.one_way:
+            closers = {int(x) for x in patch.previous[START]} - {0}
+        else:
+            closers = {int(patch.next[START, k]) for k in range(self.arms) if not self.least or k > first_arm} - {0}
+        home = distance_to(patch, sorted(closers)) + 1
+        home[0] = kernels.VISITED
+        return np.minimum(home, kernels.VISITED).astype(np.int32)
+
+
+def ground(series: Series, start: int, least: bool, top: int) -> Ground:
+    """The ground of a series for lengths up to `top`, from a small cache."""
+    with _building:
+        return _ground(series, start, least, top)
+
+
+def patch_of(series: Series, start: int, least: bool, top: int) -> Patch:
+    """The sites that a search up to length `top` can stand on or look at.
+
+    Walks look at the neighbours of all sites up to step top - 1. A polygon on an undirected lattice never goes
+    further from its root than half its length.
+    """
+    radius = max(top - 1, 1)
+    if series.rule.closed and not series.lattice.one_way:
+        radius = max(top // 2, 1)
+    return build(series.lattice, start, radius, allowed=_greater(series.lattice, start) if least else None)
+
+
+@lru_cache(maxsize=24)
+def _ground(series: Series, start: int, least: bool, top: int) -> Ground:
+    lattice = series.lattice
+    patch = patch_of(series, start, least, top)
+    # No symmetry but the identity keeps a total order of the sites that translations keep.
+    states = without_symmetry(lattice) if least else symmetry_states(lattice, start)
+    if top > kernels.VISITED // 2 or max(patch.next.shape[1], patch.previous.shape[1]) >= kernels.VISITED // 2:
+        raise InternalError("a reach or a coordination number beyond what the kernels can mark")
+    images = np.array(states.images, dtype=np.int32)
+    onward = np.array(states.onward, dtype=np.int32)
+    return Ground(series, start, least, top, patch, states, images, onward, _kernel(series, patch))
+
+
+def _greater(lattice: Lattice, start: int) -> Callable[[Array, Array], Array]:
+    """The sites after the start in the lexicographic order of positions, which translations keep."""
+    scale = lcm(*(x.denominator for site in lattice.sites for x in site.at))
+    at = np.array([[int(x * scale) for x in site.at] for site in lattice.sites], dtype=np.int64)
+
+    def allowed(kinds: Array, cells: Array) -> Array:
+        away = at[kinds] - at[start]
+        away[:, : lattice.periods] += scale * cells
+        sign = np.zeros(len(kinds), dtype=np.int64)
+        for axis in range(lattice.dimension):
+            sign = np.where(sign == 0, np.sign(away[:, axis]), sign)
+        return sign > 0
+
+    return allowed
+
+
+def _kernel(series: Series, patch: Patch) -> Callable[..., bool]:
+    arms, arms_in = int(patch.next.shape[1]), int(patch.previous.shape[1])
+    table = np.zeros((1, arms), dtype=np.int32)
+    back = np.zeros((1, arms), dtype=patch.back.dtype)
+    into = np.zeros((1, arms_in), dtype=np.int32)
+    cube = np.ones((1, 1, arms), dtype=np.int32)
+    marks = np.full(1, -1, dtype=np.int32)
+    kind = np.zeros(1, dtype=patch.kind.dtype)
+    stack = Stack.of(8)
+
+    def walk(run: Callable[..., bool]) -> None:
+        run(table, into, back, kind, cube, cube, marks, *stack.arrays(), 0)
+
+    def polygon(run: Callable[..., bool]) -> None:
+        run(table, kind, cube, cube, marks, *stack.arrays(), 0)
+
+    if series.rule.closed:
+        return compiled.kernel("direct", "polygon", kernels.polygon_kernel, (arms,), polygon)
+    traits = (arms, arms_in, series.lattice.one_way)
+    return compiled.kernel("direct", "walk", kernels.walk_kernel, traits, walk)
+
+
+@dataclass
+class Stack:
+    """The state of a search, in the arrays that kernels work on."""
+
+    path: Array
+    arm: Array
+    state: Array
+    weight: Array
+    sums: Array
+    reg: Array
+
+    @classmethod
+    def of(cls, top: int) -> Stack:
+        """Empty arrays for lengths up to `top`."""
+        small = [np.zeros(top + 3, dtype=np.int32) for _ in range(3)]
+        wide = [np.zeros(top + 3, dtype=np.int64) for _ in range(2)]
+        return cls(*small, *wide, np.zeros(kernels.REGISTERS, dtype=np.int64))
+
+    def arrays(self) -> tuple[Array, ...]:
+        return (self.path, self.arm, self.state, self.weight, self.sums, self.reg)

@@ -1,0 +1,192 @@
+"""One depth-first search below one prefix: slice by slice, resumable, able to hand back what it has not seen."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Iterator
+
+import numpy as np
+
+from fleetcount.errors import InputError, InternalError
+from fleetcount.methods.direct.ground import START, Array, Ground, Stack
+from fleetcount.methods.direct.kernels import DEPTH, FLOOR, NODES, TOP, VISITED
+
+SLICE_NODES = 1 << 24
+"""No call of a kernel visits more nodes than this (and one node's leaves)."""
+
+SLICE_SECONDS = 0.05
+"""Length of a slice to aim at, between 0.02 and 0.1 s."""
+
+_FIRST_SLICE = 1 << 17
+
+
+def check_bound(ground: Ground) -> None:
+    """Prove that no 64-bit sum overflows within a slice.
+
+    Each node visited adds to a sum at most (arms * arms) objects times its weight, and the weight never exceeds the
+    order of the symmetry group of the start, since it is the index of one of its subgroups.
+    """
+    nodes = SLICE_NODES + ground.arms + 1
+    order = max(ground.states.orders)
+    if nodes * ground.arms * ground.arms * order >= 2**63:
+        raise InputError(
+            "too many arms and symmetries for 64-bit slices",
+            where=f"lattice {ground.series.lattice.name}",
+            mend=f"arms * arms * order of the group must stay under {2**63 // nodes}",
+        )
+
+
+class Search:
+    """The subtree below `arms`, on a ground. Sums are Python integers by length; kernels' own are cleared each slice.
+
+    A prefix is legal when it avoids itself; `Search` raises InputError when it is not.
+    """
+
+    def __init__(self, ground: Ground, arms: tuple[int, ...]) -> None:
+        check_bound(ground)
+        self.ground = ground
+        self.arms = arms
+        self.base = len(arms)
+        self.sums: dict[int, int] = {}
+        self.nodes = 0
+        self.seconds = 0.0
+        self.done = False
+        self._slice = _FIRST_SLICE
+        self._stack = Stack.of(ground.top)
+        self._closed = ground.series.rule.closed
+        patch = ground.patch
+        if self._closed:
+            self._marks = ground.home(arms[0] if arms else 0)
+        else:
+            self._marks = patch.free.astype(np.int32)
+            self._marks[0] = -VISITED
+        self._walk_to_base()
+        if not self.done:
+            self._count_base()
+
+    @staticmethod
+    def reaches(ground: Ground, depth: int) -> bool:
+        """Whether a prefix of that depth leaves the kernels enough steps; they count the last ones without visiting."""
+        return depth <= ground.top - 4
+
+    def slice(self) -> bool:
+        """Run one slice; returns whether the subtree is exhausted down to the floor."""
+        if self.done:
+            return True
+        began = time.thread_time()
+        ground, patch = self.ground, self.ground.patch
+        kind, images, onward = patch.kind, ground.images, ground.onward
+        if self._closed:
+            arrays: tuple[Array, ...] = (patch.next, kind, images, onward, self._marks)
+        else:
+            arrays = (patch.next, patch.previous, patch.back, kind, images, onward, self._marks)
+        done = ground.run(*arrays, *self._stack.arrays(), self._slice)
+        spent = time.thread_time() - began
+        self._collect(spent)
+        self.done = bool(done) and self._reg(FLOOR) == self.base
+        return bool(done)
+
+    def climb(self) -> Iterator[None]:
+        """Finish the deepest open subtrees first, slice by slice, until the caller has had enough or all is done."""
+        while not self.done:
+            self._stack.reg[FLOOR] = self._reg(DEPTH)
+            while not self.slice():
+                yield
+            yield
+            if not self.done:
+                self._pop()
+
+    def rest(self) -> Iterator[tuple[tuple[int, ...], int]]:
+        """The prefixes not seen yet, each with its images under the symmetries that keep this search's own prefix.
+
+        What their parents have already counted of them (the prefix itself, for walks) is taken out of the sums, so
+        call it once, at the end.
+        """
+        if self.done:
+            return
+        ground, stack = self.ground, self._stack
+        path = [*self.arms, *(int(stack.arm[d]) - 1 for d in range(self.base, self._reg(DEPTH)))]
+        for depth in range(self.base, self._reg(DEPTH) + 1):
+            here, state = int(stack.path[depth]), int(stack.state[depth])
+            kind = int(ground.patch.kind[here])
+            for arm in range(int(stack.arm[depth]), ground.arms):
+                there = int(ground.patch.next[here, arm])
+                times = int(ground.images[state, kind, arm])
+                if times and self._can_go(there, depth):
+                    factor = times * int(stack.weight[depth])
+                    if not self._closed:
+                        self.sums[depth + 1] -= factor
+                    yield (*path[:depth], arm), factor
+        self.done = True
+
+    def _can_go(self, there: int, depth: int) -> bool:
+        if self._closed:
+            return depth + 1 + int(self._marks[there]) <= self.ground.top
+        return int(self._marks[there]) >= 0
+
+    def _reg(self, which: int) -> int:
+        return int(self._stack.reg[which])
+
+    def _collect(self, spent: float) -> None:
+        stack = self._stack
+        for n in np.flatnonzero(stack.sums):
+            self.sums[int(n)] = self.sums.get(int(n), 0) + int(stack.sums[n])
+        stack.sums[:] = 0
+        nodes = self._reg(NODES)
+        stack.reg[NODES] = 0
+        self.nodes += nodes
+        self.seconds += spent
+        if nodes >= self._slice and spent > 0:
+            aim = int(self._slice * min(4.0, SLICE_SECONDS / spent))
+            self._slice = max(1024, min(SLICE_NODES, aim))
+
+    def _walk_to_base(self) -> None:
+        ground, stack = self.ground, self._stack
+        stack.reg[TOP], stack.reg[FLOOR] = ground.top, self.base
+        stack.state[0] = ground.states.first
+        stack.weight[:] = 1
+        stack.path[0] = START
+        self._mark(START)
+        for depth, arm in enumerate(self.arms):
+            here, state = int(stack.path[depth]), int(stack.state[depth])
+            kind = int(ground.patch.kind[here])
+            there = int(ground.patch.next[here, arm]) if arm < ground.arms else 0
+            if there == 0 and self._closed:  # too far away to come home: nothing is there to be counted
+                self.done = True
+                return
+            if there == 0 or there in stack.path[: depth + 1]:
+                raise InputError("a prefix that the object cannot begin with", where=".".join(map(str, self.arms)))
+            if int(ground.images[state, kind, arm]) == 0:
+                raise InputError("a prefix that another one stands for", where=".".join(map(str, self.arms)))
+            stack.path[depth + 1] = there
+            stack.state[depth + 1] = ground.onward[state, kind, arm]
+            stack.arm[depth] = ground.arms
+            self._mark(there)
+        stack.reg[DEPTH] = self.base
+
+    def _count_base(self) -> None:
+        """What a parent would have counted when it stepped onto this prefix, and the prefix itself."""
+        here = int(self._stack.path[self.base])
+        if not self._closed:
+            self.sums = {self.base: 1, self.base + 1: int(self._marks[here]) + VISITED}
+        elif self.base and int(self._marks[here]) - VISITED == 1:
+            self.sums = {self.base + 1: 1}
+
+    def _mark(self, site: int) -> None:
+        if self._closed:
+            self._marks[site] += VISITED
+            return
+        np.subtract.at(self._marks, self.ground.patch.previous[site], 1)
+        self._marks[site] -= VISITED
+
+    def _pop(self) -> None:
+        depth = self._reg(DEPTH)
+        if depth <= self.base:
+            raise InternalError("a search climbed above its own prefix")
+        site = int(self._stack.path[depth])
+        if self._closed:
+            self._marks[site] -= VISITED
+        else:
+            self._marks[site] += VISITED
+            np.add.at(self._marks, self.ground.patch.previous[site], 1)
+        self._stack.reg[DEPTH] = depth - 1
