@@ -35,9 +35,9 @@ class Tally:
         for place, values in other.rows.items():
             old = rows.get(place)
             if old is None:
-                rows[place] = tuple(factor * v for v in values)
+                rows[place] = tuple([factor * v for v in values])
             else:
-                rows[place] = tuple(o + factor * v for o, v in zip(old, values, strict=True))
+                rows[place] = tuple([o + factor * v for o, v in zip(old, values, strict=True)])
 
     def __add__(self, other: Tally) -> Tally:
         total = Tally(self.width, dict(self.rows))
@@ -67,14 +67,14 @@ class Tally:
 
     def canonical(self) -> list[list[str]]:
         """Rows as canonical JSON takes them: place and sums, each number as decimal text."""
-        return [[str(x) for x in (*place, *values)] for place, values in self.sorted_rows()]
+        return [[*map(str, place), *map(str, values)] for place, values in self.sorted_rows()]
 
     @classmethod
     def from_canonical(cls, rows: Iterable[Iterable[str]], width: int = 1) -> Tally:
         """The tally of `canonical()` rows whose last `width` entries are sums."""
         table: dict[Place, tuple[int, ...]] = {}
         for row in rows:
-            numbers = tuple(int(x) for x in row)
+            numbers = tuple(map(int, row))
             table[numbers[:-width]] = numbers[-width:]
         return cls(width, table)
 

@@ -21,6 +21,7 @@ class Sum:
 
     def __init__(self, width: int) -> None:
         self.width = width
+        self.counts: dict[str, int] = defaultdict(int)
         self.columns: list[dict[tuple[str, ...], int]] = [defaultdict(int) for _ in range(width)]
         self.seconds = 0.0
         self.tallies = 0
@@ -29,21 +30,27 @@ class Sum:
 
     def add(self, fields: dict[str, Any], weight: int, seconds: float | None) -> None:
         """Add a tally times the weight of its unit."""
-        width = self.width
-        for column, sums in enumerate(self.columns, -width):
-            for row in fields["rows"]:
-                sums[tuple(row[:-width])] += weight * int(row[column])
+        rows = fields["rows"]
+        if self.width == 1 and rows and len(rows[0]) == 2:  # plain counts by length, in half the time
+            counts = self.counts
+            for length, count in rows:
+                counts[length] += weight * int(count)
+        else:
+            for column, sums in enumerate(self.columns, -self.width):
+                for row in rows:
+                    sums[tuple(row[: -self.width])] += weight * int(row[column])
         self.tallies += 1
         self.seconds += seconds or 0.0
         self.machines[fields["machine"]] += int(fields["nodes"])
         self.engines.add(fields["engine"])
 
     def table(self) -> Tally:
-        places = self.columns[0]
-        return Tally(
-            self.width,
-            {tuple(map(int, place)): tuple(sums[place] for sums in self.columns) for place in places},
-        )
+        table = Tally(self.width)
+        for place in self.columns[0]:
+            table.rows[tuple(map(int, place))] = tuple(sums[place] for sums in self.columns)
+        if self.counts:
+            table.add(Tally.of_counts({int(length): count for length, count in self.counts.items()}))
+        return table
 
 
 def stream(connection: sa.Connection, query: sa.Select[Any]) -> Iterator[Any]:
