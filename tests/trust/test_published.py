@@ -136,7 +136,7 @@ def test_agreement_names_reach_and_source() -> None:
 
 
 def test_lengths_nobody_published_are_passed_over() -> None:
-    """Lengths that the table leaves out do not count as agreement: odd ones for polygons on the square lattice."""
+    """Lengths that the table leaves out, here the odd ones, do not count as agreement."""
     agreement = published.compare(series("square", "polygon"), {3: 0, 4: 1, 5: 0, 6: 2, 7: 0}, 7)
     assert agreement is not None
     assert agreement.line() == "agrees with published values to n=6 (A002931: Clisby, Jensen 2012)"
