@@ -5,7 +5,7 @@ from __future__ import annotations
 import itertools
 import tempfile
 import warnings
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from pathlib import Path
 from urllib.parse import urlsplit, urlunsplit
 

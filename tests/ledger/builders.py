@@ -31,7 +31,11 @@ def begin(store: Store, holder: Holder = GONE, digest: str = DIGEST, definition:
 
 
 def opening(
-    roots: Sequence[Part], reading: str | None = None, lengths: str = "0-9", digest: str = DIGEST, width: int = 1
+    roots: Sequence[Part],
+    reading: str | None = None,
+    lengths: str = "0-9",
+    digest: str = DIGEST,
+    width: int = 1,
 ) -> OpeningRecord:
     return OpeningRecord(
         series=digest,
