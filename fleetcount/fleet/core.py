@@ -89,7 +89,9 @@ class Core:
         left = remaining * self.pace.drift / self.pace.rate / max(1, slots)
         return max(LEAST_SECONDS, min(self.budget, left / 2))
 
-    def deal(self, waiting: Sequence[UnitRow], tokens: Iterable[str], remaining: float, slots: int) -> list[Bundle]:
+    def deal(
+        self, waiting: Sequence[UnitRow], tokens: Iterable[str], remaining: float, slots: int
+    ) -> list[Bundle]:
         """Bundles for the free cores out of the units that wait, the largest first.
 
         A unit that processes died over goes alone. The bundles are not out before `sent`.

@@ -7,7 +7,7 @@ import time
 from collections.abc import Callable
 from typing import TYPE_CHECKING, Any
 
-from fleetcount.fleet.work import HandBack, HandOut, work
+from fleetcount.fleet.work import STOP, HandBack, HandOut, work
 
 if TYPE_CHECKING:
     from distributed import Client, Future
@@ -24,7 +24,9 @@ class DaskCrew:
         upkeep: called now and then, to mend what is broken.
     """
 
-    def __init__(self, client: Client, stop: Callable[[], None], upkeep: Callable[[], None] = lambda: None) -> None:
+    def __init__(
+        self, client: Client, stop: Callable[[], None], upkeep: Callable[[], None] = lambda: None
+    ) -> None:
         self._client = client
         self._stop = stop
         self._upkeep = upkeep
@@ -67,3 +69,16 @@ class DaskCrew:
             return error
         finally:
             future.release()
+
+
+def on_client(client: Client) -> DaskCrew:
+    """The cluster of an open client as a crew; its workers need this package installed."""
+    return DaskCrew(client, lambda: _raise_flags(client))
+
+
+def _raise_flags(client: Client) -> None:
+    client.run(_raise_flag, wait=False)
+
+
+def _raise_flag() -> None:
+    STOP.up = True

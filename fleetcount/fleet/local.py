@@ -64,7 +64,9 @@ class LocalFleet:
         from distributed import Client, LocalCluster
 
         logging.getLogger("distributed").setLevel(logging.CRITICAL)
-        dask.config.set({"distributed.scheduler.work-stealing": False, "distributed.scheduler.allowed-failures": 0})
+        dask.config.set(
+            {"distributed.scheduler.work-stealing": False, "distributed.scheduler.allowed-failures": 0}
+        )
         cluster = LocalCluster(  # type: ignore[no-untyped-call]
             n_workers=0,
             processes=False,
@@ -134,7 +136,12 @@ class LocalFleet:
     def _keep_alive(self) -> None:
         """Start the worker again if it has gone; give up when it goes again and again without having counted."""
         if self._closing or self._process is None or self._process.poll() is None:
-            if self._client is not None and self._process is not None and self._starts > 1 and self._counting():
+            if (
+                self._client is not None
+                and self._process is not None
+                and self._starts > 1
+                and self._counting()
+            ):
                 self._starts = 1
             return
         if self._starts >= _BAD_STARTS:

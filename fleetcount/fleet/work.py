@@ -138,7 +138,12 @@ def count_bundle(hand_out: HandOut, stop: StopFlag) -> HandBack:
             continue
         try:
             answer, counted = answer_unit(
-                task, method, key, factor, hand_out.token, lambda k=key: method.count(task.series, lengths, k, clock)
+                task,
+                method,
+                key,
+                factor,
+                hand_out.token,
+                lambda k=key: method.count(task.series, lengths, k, clock),
             )
         except FleetcountError as error:
             back.failed.append((key, str(error)))

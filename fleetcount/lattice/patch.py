@@ -84,9 +84,7 @@ def build(
     Raises:
         InputError: the patch would not fit; it says how much it would need.
     """
-    _check_arguments(lattice, start, radius)
-    limit = _memory() if limit is None else limit
-    _check_size(lattice, radius, sites_needed(lattice, start, radius, allowed), limit)
+    limit = check_fits(lattice, start, radius, allowed, limit)
     keys = Keys(lattice, radius + 1)
     shells = []
     sites = 0
@@ -95,6 +93,16 @@ def build(
         sites += len(shell)
         _check_size(lattice, radius, sites, 2 * limit)
     return _assemble(keys, shells, start, radius, allowed is not None)
+
+
+def check_fits(
+    lattice: Lattice, start: int, radius: int, allowed: Allowed | None = None, limit: int | None = None
+) -> int:
+    """Raise InputError, as `build` does, if the patch would not fit; returns the limit in bytes."""
+    _check_arguments(lattice, start, radius)
+    limit = _memory() if limit is None else limit
+    _check_size(lattice, radius, sites_needed(lattice, start, radius, allowed), limit)
+    return limit
 
 
 def sites_needed(lattice: Lattice, start: int, radius: int, allowed: Allowed | None = None) -> int:

@@ -55,6 +55,7 @@ def kernel(
             with _filling(method):
                 made = factory(*traits)
                 example(made)
+                (folder(method) / _marker(name, traits)).touch()
             _ready[key] = made
             seconds_compiling[f"{name}{traits}"] = time.perf_counter() - began
         return _ready[key]
@@ -74,13 +75,8 @@ def _filling(method: str) -> Any:
 
 
 def is_warm(method: str, name: str, traits: tuple[object, ...]) -> bool:
-    """Whether that kernel needs no compiling: a marker stands in the cache folder."""
+    """Whether that kernel was compiled before on this machine, by this engine."""
     return (folder(method) / _marker(name, traits)).exists()
-
-
-def mark_warm(method: str, name: str, traits: tuple[object, ...]) -> None:
-    """Leave the marker that `is_warm` looks for."""
-    (folder(method) / _marker(name, traits)).touch()
 
 
 def _marker(name: str, traits: tuple[object, ...]) -> str:

@@ -85,6 +85,15 @@ class Method(Protocol):
     def refuses(self, series: Series) -> str | None:
         """Why it cannot count this series, or None."""
 
+    def check_reach(self, series: Series, top: int) -> None:
+        """Raise InputError if that length is beyond what memory or the method's own arrays allow."""
+
+    def is_warm(self, series: Series) -> bool:
+        """Whether the compiled parts lie in this machine's cache already."""
+
+    def prepare(self, series: Series, lengths: Sequence[int]) -> None:
+        """Make everything that counting needs in this process: compiled parts, tables."""
+
     def roots(self, series: Series, lengths: Sequence[int]) -> tuple[Child, ...]:
         """The first units, sorted by key."""
 

@@ -90,7 +90,9 @@ def define(lattice: Lattice, object_name: str, start: str | None = None) -> Seri
     rule = find_object(object_name)
     names = [site.name for site in lattice.sites]
     if start is not None and start not in names:
-        raise SeriesError(f"no site named {start!r}", where=f"lattice {lattice.name}", mend=f"its sites: {', '.join(names)}")
+        raise SeriesError(
+            f"no site named {start!r}", where=f"lattice {lattice.name}", mend=f"its sites: {', '.join(names)}"
+        )
     if rule.closed:
         if start is not None:
             raise SeriesError(f"a {rule.name} has no start", where="--start", mend="leave it out")
@@ -113,7 +115,9 @@ def from_canonical(form: Mapping[str, object], name: str = "from a ledger") -> S
             metric=tuple(tuple(Fraction(x) for x in row) for row in body["metric"]),
             metric_is="exact",
             up=tuple(int(i == body["dimension"] - 1) for i in range(body["dimension"])),
-            sites=tuple(Site(str(i), tuple(Fraction(x) for x in at)) for i, at in enumerate(body["positions"])),
+            sites=tuple(
+                Site(str(i), tuple(Fraction(x) for x in at)) for i, at in enumerate(body["positions"])
+            ),
             arcs=tuple(Arc(s, t, tuple(cell)) for s, t, cell in body["arcs"]),
             one_way=body["one_way"],
         )

@@ -26,5 +26,7 @@ def parse_lengths(text: str) -> Sequence[int]:
             first, _, last = run.partition("-")
             lengths.update(range(int(first), int(last or first) + 1))
     except ValueError:
-        raise InputError("not a set of lengths", where=repr(text), mend="write for example 0-22 or 3,5-7") from None
+        raise InputError(
+            "not a set of lengths", where=repr(text), mend="write for example 0-22 or 3,5-7"
+        ) from None
     return tuple(sorted(lengths))

@@ -59,7 +59,9 @@ class CoefficientTable:
         """The table up to a length; asking beyond its reach is an error that says how far it goes."""
         if self.final is None or to > self.final:
             raise InputError(
-                f"the term of length {to} is not final", where=self.series.title(), mend=f"final so far: {self._reach()}"
+                f"the term of length {to} is not final",
+                where=self.series.title(),
+                mend=f"final so far: {self._reach()}",
             )
         kept = Tally(self.sums.width, {p: row for p, row in self.sums.rows.items() if p[0] <= to})
         return CoefficientTable(self.series, to, kept, self.divisor, self.complete, self.chain)
@@ -67,7 +69,9 @@ class CoefficientTable:
     def per_site(self) -> CoefficientTable:
         """The same numbers with the divisor that makes them the number per site instead of per cell."""
         sites = len(self.series.lattice.sites) if self.series.rule.closed else self.divisor
-        return CoefficientTable(self.series, self.final, self.sums, sites, self.complete, self.chain, self.so_far)
+        return CoefficientTable(
+            self.series, self.final, self.sums, sites, self.complete, self.chain, self.so_far
+        )
 
     def _reach(self) -> str:
         return "nothing" if self.final is None else f"lengths {self.least} to {self.final}"
@@ -83,13 +87,21 @@ class CoefficientTable:
         """One row for each length that is not final, with the sum so far."""
         if self.so_far is None:
             return []
-        return [[n, str(count)] for n, count in self.so_far.counts().items() if self.final is None or n > self.final]
+        return [
+            [n, str(count)]
+            for n, count in self.so_far.counts().items()
+            if self.final is None or n > self.final
+        ]
 
     def document(self) -> dict[str, Any]:
         """The table as a JSON document; exact integers are decimal strings."""
         document: dict[str, Any] = {
             "format": FORMAT,
-            "series": {**self.series.written(), "definition": self.series.canonical(), "digest": self.series.digest},
+            "series": {
+                **self.series.written(),
+                "definition": self.series.canonical(),
+                "digest": self.series.digest,
+            },
             "final": self.final,
             "columns": list(self.columns),
             "rows": self.rows(),

@@ -5,13 +5,20 @@ These are floats. They order units, size bundles and show progress; they never e
 
 from __future__ import annotations
 
+import math
 import time
 from dataclasses import dataclass
 
 from fleetcount.methods.direct.keys import Prefix
 
-SECONDS = 0.15
-_LEAST_NODES = 20_000
+KERNEL_SECONDS = 0.04
+"""A trial that spent so long in kernels tells the rate well enough."""
+
+ALL_SECONDS = 1.0
+"""No more core time than this goes into trials, the making of patches included."""
+
+_MOST = 600.0
+"""Greatest logarithm of an extrapolation: beyond it everything is equally hopeless."""
 
 
 @dataclass(frozen=True)
@@ -33,8 +40,11 @@ class Calibration:
         """Nodes expected for the whole count up to a reach."""
         if reach in self.reaches:
             return self.nodes[self.reaches.index(reach)]
-        last = -1 if (reach - self.reaches[-1]) % 2 == 0 or len(self.reaches) < 2 else -2  # parity: see polygons
-        return max(1.0, self.nodes[last] * self.growth ** (reach - self.reaches[last]))
+        last = (
+            -1 if (reach - self.reaches[-1]) % 2 == 0 or len(self.reaches) < 2 else -2
+        )  # parity: see polygons
+        steps = min(reach - self.reaches[last], _MOST / math.log(self.growth))
+        return max(1.0, self.nodes[last] * self.growth**steps)
 
 
 def below(calibration: Calibration, top: int, prefix: Prefix, order: int, whole_order: int) -> float:
@@ -60,7 +70,7 @@ class Calibrator:
 
     def enough(self) -> bool:
         spent = time.thread_time() - self._began
-        return spent > 2 * SECONDS or (bool(self.nodes) and spent > SECONDS and self.nodes[-1] > _LEAST_NODES)
+        return spent > ALL_SECONDS or (bool(self.seconds) and self.seconds[-1] > KERNEL_SECONDS)
 
     def result(self) -> Calibration:
         """Growth from the last terms, two apart where parity makes single steps jump."""

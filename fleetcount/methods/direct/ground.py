@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import threading
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from functools import lru_cache
 from math import lcm
@@ -11,9 +11,9 @@ from typing import Any
 
 import numpy as np
 
-from fleetcount.errors import InternalError
+from fleetcount.errors import SeriesError
 from fleetcount.lattice.model import Lattice
-from fleetcount.lattice.patch import Patch, build, distance_to
+from fleetcount.lattice.patch import Patch, build, check_fits, distance_to
 from fleetcount.methods import compiled
 from fleetcount.methods.direct import kernels
 from fleetcount.methods.direct.symmetry_states import SymmetryStates, symmetry_states, without_symmetry
@@ -57,7 +57,9 @@ class Ground:
         if self.series.lattice.one_way:
             closers = {int(x) for x in patch.previous[START]} - {0}
         else:
-            closers = {int(patch.next[START, k]) for k in range(self.arms) if not self.least or k > first_arm} - {0}
+            closers = {
+                int(patch.next[START, k]) for k in range(self.arms) if not self.least or k > first_arm
+            } - {0}
         home = distance_to(patch, sorted(closers)) + 1
         home[0] = kernels.VISITED
         return np.minimum(home, kernels.VISITED).astype(np.int32)
@@ -75,10 +77,26 @@ def patch_of(series: Series, start: int, least: bool, top: int) -> Patch:
     Walks look at the neighbours of all sites up to step top - 1. A polygon on an undirected lattice never goes
     further from its root than half its length.
     """
-    radius = max(top - 1, 1)
+    allowed = _greater(series.lattice, start) if least else None
+    return build(series.lattice, start, _radius(series, top), allowed)
+
+
+def check_reach(series: Series, starts: Iterable[int], top: int) -> None:
+    """Raise InputError if the kernels' marks or this machine's memory do not allow that length."""
+    if top > kernels.VISITED // 2:
+        raise SeriesError(
+            f"length {top} is beyond what the direct method can mark",
+            where=series.title(),
+            mend=f"ask for at most {kernels.VISITED // 2}",
+        )
+    for start in starts:
+        check_fits(series.lattice, start, _radius(series, top))
+
+
+def _radius(series: Series, top: int) -> int:
     if series.rule.closed and not series.lattice.one_way:
-        radius = max(top // 2, 1)
-    return build(series.lattice, start, radius, allowed=_greater(series.lattice, start) if least else None)
+        return max(top // 2, 1)
+    return max(top - 1, 1)
 
 
 @lru_cache(maxsize=24)
@@ -87,8 +105,6 @@ def _ground(series: Series, start: int, least: bool, top: int) -> Ground:
     patch = patch_of(series, start, least, top)
     # No symmetry but the identity keeps a total order of the sites that translations keep.
     states = without_symmetry(lattice) if least else symmetry_states(lattice, start)
-    if top > kernels.VISITED // 2 or max(patch.next.shape[1], patch.previous.shape[1]) >= kernels.VISITED // 2:
-        raise InternalError("a reach or a coordination number beyond what the kernels can mark")
     images = np.array(states.images, dtype=np.int32)
     onward = np.array(states.onward, dtype=np.int32)
     return Ground(series, start, least, top, patch, states, images, onward, _kernel(series, patch))
@@ -110,8 +126,17 @@ def _greater(lattice: Lattice, start: int) -> Callable[[Array, Array], Array]:
     return allowed
 
 
+def kernel_of(series: Series) -> tuple[str, tuple[int, ...]]:
+    """Name and traits of the kernel that counts a series."""
+    lattice = series.lattice
+    arms, arms_in = (max(map(len, table)) for table in (lattice.arms, lattice.arms_in))
+    if series.rule.closed:
+        return "polygon", (arms,)
+    return "walk", (arms, arms_in, int(lattice.one_way))
+
+
 def _kernel(series: Series, patch: Patch) -> Callable[..., bool]:
-    arms, arms_in = int(patch.next.shape[1]), int(patch.previous.shape[1])
+    arms, arms_in = int(patch.next.shape[1]), int(patch.previous.shape[1])  # those of the lattice
     table = np.zeros((1, arms), dtype=np.int32)
     back = np.zeros((1, arms), dtype=patch.back.dtype)
     into = np.zeros((1, arms_in), dtype=np.int32)
@@ -126,10 +151,10 @@ def _kernel(series: Series, patch: Patch) -> Callable[..., bool]:
     def polygon(run: Callable[..., bool]) -> None:
         run(table, kind, cube, cube, marks, *stack.arrays(), 0)
 
+    name, traits = kernel_of(series)
     if series.rule.closed:
-        return compiled.kernel("direct", "polygon", kernels.polygon_kernel, (arms,), polygon)
-    traits = (arms, arms_in, series.lattice.one_way)
-    return compiled.kernel("direct", "walk", kernels.walk_kernel, traits, walk)
+        return compiled.kernel("direct", name, kernels.polygon_kernel, traits, polygon)
+    return compiled.kernel("direct", name, kernels.walk_kernel, traits, walk)
 
 
 @dataclass

@@ -44,6 +44,19 @@ class DirectMethod:
         """Any lattice and object can be enumerated."""
         return None
 
+    def check_reach(self, series: Series, top: int) -> None:
+        """See `Method.check_reach`; nothing is built."""
+        from fleetcount.methods.direct import ground  # compiled code is imported late
+
+        ground.check_reach(series, self._starts(series), top)
+
+    def is_warm(self, series: Series) -> bool:
+        """See `Method.is_warm`."""
+        from fleetcount.methods import compiled  # compiled code is imported late
+        from fleetcount.methods.direct.ground import kernel_of
+
+        return compiled.is_warm(self.name, *kernel_of(series))
+
     def prepare(self, series: Series, lengths: Sequence[int]) -> None:
         """Make patch, symmetry states and kernels for that reach; says so in one line if the patch is too big."""
         from fleetcount.methods.direct.ground import ground  # compiled code is imported late
@@ -57,7 +70,9 @@ class DirectMethod:
         least = self._rooted_at_least(series, top)
         starts = {s: 1 for s in range(len(series.lattice.sites))} if least else self._starts(series)
         each = _calibrate(series, least).total(top) / len(starts)
-        return tuple(Child(keys.Prefix(s, least, ()).key(), weight, each) for s, weight in sorted(starts.items()))
+        return tuple(
+            Child(keys.Prefix(s, least, ()).key(), weight, each) for s, weight in sorted(starts.items())
+        )
 
     def divide(self, series: Series, lengths: Sequence[int], key: str) -> Counted:
         """The prefix itself is explored, its extensions are the children."""

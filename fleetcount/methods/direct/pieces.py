@@ -64,5 +64,7 @@ def taken_out(
             whole.append(piece)
     if cuts:
         arms = min(cuts)
-        raise InputError("a subtree to leave out is not part of the unit", where=prefix._replace(arms=arms).key())
+        raise InputError(
+            "a subtree to leave out is not part of the unit", where=prefix._replace(arms=arms).key()
+        )
     return whole, passed

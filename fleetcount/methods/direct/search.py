@@ -17,7 +17,8 @@ SLICE_NODES = 1 << 24
 SLICE_SECONDS = 0.05
 """Length of a slice to aim at, between 0.02 and 0.1 s."""
 
-_FIRST_SLICE = 1 << 17
+FIRST_SLICE = 1 << 17
+LEAST_SLICE = 1 << 10
 
 
 def check_bound(ground: Ground) -> None:
@@ -51,7 +52,7 @@ class Search:
         self.nodes = 0
         self.seconds = 0.0
         self.done = False
-        self._slice = _FIRST_SLICE
+        self._slice = FIRST_SLICE
         self._stack = Stack.of(ground.top)
         self._closed = ground.series.rule.closed
         patch = ground.patch
@@ -112,7 +113,7 @@ class Search:
             for arm in range(int(stack.arm[depth]), ground.arms):
                 there = int(ground.patch.next[here, arm])
                 times = int(ground.images[state, kind, arm])
-                if times and self._can_go(there, depth):
+                if times and there and self._can_go(there, depth):
                     factor = times * int(stack.weight[depth])
                     if not self._closed:
                         self.sums[depth + 1] -= factor
@@ -120,9 +121,14 @@ class Search:
         self.done = True
 
     def _can_go(self, there: int, depth: int) -> bool:
-        if self._closed:
-            return depth + 1 + int(self._marks[there]) <= self.ground.top
-        return int(self._marks[there]) >= 0
+        """Whether a step from `depth` may go to a site: sites visited further on are no obstacle to it."""
+        sites = self._stack.path[: self._reg(DEPTH) + 1]
+        if there in sites[: depth + 1]:
+            return False
+        if not self._closed:
+            return True
+        home = int(self._marks[there]) - (VISITED if there in sites else 0)
+        return depth + 1 + home <= self.ground.top
 
     def _reg(self, which: int) -> int:
         return int(self._stack.reg[which])
@@ -138,7 +144,7 @@ class Search:
         self.seconds += spent
         if nodes >= self._slice and spent > 0:
             aim = int(self._slice * min(4.0, SLICE_SECONDS / spent))
-            self._slice = max(1024, min(SLICE_NODES, aim))
+            self._slice = max(LEAST_SLICE, min(SLICE_NODES, aim))
 
     def _walk_to_base(self) -> None:
         ground, stack = self.ground, self._stack
@@ -155,7 +161,9 @@ class Search:
                 self.done = True
                 return
             if there == 0 or there in stack.path[: depth + 1]:
-                raise InputError("a prefix that the object cannot begin with", where=".".join(map(str, self.arms)))
+                raise InputError(
+                    "a prefix that the object cannot begin with", where=".".join(map(str, self.arms))
+                )
             if int(ground.images[state, kind, arm]) == 0:
                 raise InputError("a prefix that another one stands for", where=".".join(map(str, self.arms)))
             stack.path[depth + 1] = there

@@ -68,7 +68,9 @@ def symmetry_states(lattice: Lattice, start: int) -> SymmetryStates:
     return states
 
 
-def _number(subgroup: Subgroup, numbers: dict[Subgroup, int], states: SymmetryStates, lattice: Lattice) -> int:
+def _number(
+    subgroup: Subgroup, numbers: dict[Subgroup, int], states: SymmetryStates, lattice: Lattice
+) -> int:
     if subgroup not in numbers:
         numbers[subgroup] = len(states.orders)
         _append(states, lattice, len(subgroup))

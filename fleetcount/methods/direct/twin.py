@@ -77,5 +77,8 @@ def _times(lattice: Lattice, prefix: Prefix, path: list[Point]) -> int:
     n = len(path)
     if lattice.one_way:
         return n
-    first, last = (next(k for k, _ in enumerate(lattice.arms[prefix.start]) if step(lattice, path[0], k) == p) for p in (path[1], path[-1]))
+    first, last = (
+        next(k for k, _ in enumerate(lattice.arms[prefix.start]) if step(lattice, path[0], k) == p)
+        for p in (path[1], path[-1])
+    )
     return 2 * n if first < last else 0
