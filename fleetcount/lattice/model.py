@@ -94,12 +94,18 @@ class Lattice:
     @cached_property
     def arms(self) -> tuple[tuple[Arc, ...], ...]:
         """The arcs out of each site of the cell; their places are the arm numbers of unit keys."""
-        return tuple(tuple(a for a in self.arcs if a.source == s) for s in range(len(self.sites)))
+        out: list[list[Arc]] = [[] for _ in self.sites]
+        for arc in self.arcs:
+            out[arc.source].append(arc)
+        return tuple(map(tuple, out))
 
     @cached_property
     def arms_in(self) -> tuple[tuple[Arc, ...], ...]:
         """The arcs into each site of the cell."""
-        return tuple(tuple(a for a in self.arcs if a.target == s) for s in range(len(self.sites)))
+        into: list[list[Arc]] = [[] for _ in self.sites]
+        for arc in self.arcs:
+            into[arc.target].append(arc)
+        return tuple(map(tuple, into))
 
     def canonical(self) -> dict[str, object]:
         """What of the lattice enters the digest of a series: no names, titles or comments."""

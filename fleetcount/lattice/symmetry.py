@@ -82,9 +82,9 @@ def site_orbits(lattice: Lattice) -> tuple[tuple[int, ...], ...]:
         return site
 
     for site in range(1, len(leader)):
+        if find(site) != site:
+            continue
         for first in sorted({find(s) for s in range(site)}):
-            if find(site) == first:
-                break
             carrying = next(_carrying(lattice, first, site), None)
             if carrying is not None:
                 for source, image in enumerate(carrying.images):
@@ -110,13 +110,9 @@ def arm_map(lattice: Lattice, symmetry: Symmetry, site: int) -> tuple[int, ...]:
 
 def translations(lattice: Lattice) -> Iterator[Symmetry]:
     """The translations finer than the cell: none if the cell is primitive."""
-    placed = _places(lattice)
     unit = tuple(tuple(int(i == j) for j in range(lattice.dimension)) for i in range(lattice.dimension))
-    arcs = frozenset(lattice.arcs)
     for image in range(1, len(lattice.sites)):
-        symmetry = _symmetry(lattice, placed, arcs, unit, 0, image)
-        if symmetry is not None:
-            yield symmetry
+        yield from _with_matrices(lattice, (unit,), 0, image)
 
 
 def _is_identity(symmetry: Symmetry) -> bool:
@@ -126,18 +122,42 @@ def _is_identity(symmetry: Symmetry) -> bool:
 
 def _carrying(lattice: Lattice, site: int, image: int) -> Iterator[Symmetry]:
     """The symmetries that carry `site` of cell 0 to `image` of cell 0."""
-    if len(lattice.arms[site]) != len(lattice.arms[image]):
-        return
-    placed = _places(lattice)
+    if _colours(lattice)[site] == _colours(lattice)[image]:
+        yield from _with_matrices(lattice, _matrices(lattice), site, image)
+
+
+def _with_matrices(lattice: Lattice, matrices: Sequence[Matrix], site: int, image: int) -> Iterator[Symmetry]:
+    """Those of them that have one of these linear parts."""
+    colours = _colours(lattice)
+    placed = {place: number for number, place in enumerate(lattice.positions)}
     arcs = frozenset(lattice.arcs)
-    for matrix in _matrices(lattice):
-        symmetry = _symmetry(lattice, placed, arcs, matrix, site, image)
-        if symmetry is not None:
+    for matrix in matrices:
+        symmetry = _symmetry(lattice, placed, colours, matrix, site, image)
+        if symmetry is not None and all(_image(symmetry, arc) in arcs for arc in lattice.arcs):
             yield symmetry
 
 
-def _places(lattice: Lattice) -> dict[Vector, int]:
-    return {place: number for number, place in enumerate(lattice.positions)}
+@lru_cache(maxsize=32)
+def _colours(lattice: Lattice) -> tuple[int, ...]:
+    """Numbers of the sites that differ wherever no symmetry can carry one site to the other.
+
+    Refined until stable: a colour is split by the lengths of the arcs and the colours at their ends. In
+    a large cell this leaves few pairs of sites to be tried.
+    """
+    gram = lattice.gram
+    norms = [sum(map(operator.mul, step, _times(gram, step))) for step in map(lattice.step, lattice.arcs)]
+    colours = [0] * len(lattice.sites)
+    count = 0
+    while len(set(colours)) > count:
+        count = len(set(colours))
+        seen: list[list[tuple[int, int, int]]] = [[] for _ in colours]
+        for arc, norm in zip(lattice.arcs, norms, strict=True):
+            seen[arc.source].append((0, norm, colours[arc.target]))
+            seen[arc.target].append((1, norm, colours[arc.source]))
+        marks = [(colour, tuple(sorted(around))) for colour, around in zip(colours, seen, strict=True)]
+        number = {mark: k for k, mark in enumerate(sorted(set(marks)))}
+        colours = [number[mark] for mark in marks]
+    return tuple(colours)
 
 
 def _times(matrix: Sequence[Sequence[int]], vector: Sequence[int]) -> Vector:
@@ -145,23 +165,27 @@ def _times(matrix: Sequence[Sequence[int]], vector: Sequence[int]) -> Vector:
 
 
 def _symmetry(
-    lattice: Lattice, placed: dict[Vector, int], arcs: frozenset[Arc], matrix: Matrix, site: int, image: int
+    lattice: Lattice,
+    placed: dict[Vector, int],
+    colours: Sequence[int],
+    matrix: Matrix,
+    site: int,
+    image: int,
 ) -> Symmetry | None:
-    """The symmetry with this linear part that carries `site` to `image`, both of cell 0, if there is one."""
+    """The map with this linear part that carries `site` to `image`, both of cell 0, if it keeps the sites."""
     periods, scale = lattice.periods, lattice.scale
     start, end = lattice.positions[site], lattice.positions[image]
     shift = tuple(map(operator.sub, end, _times(matrix, start)))
     images, shifts = [], []
-    for place in lattice.positions:
+    for colour, place in zip(colours, lattice.positions, strict=True):
         moved = tuple(map(operator.add, _times(matrix, place), shift))
         cell = tuple(x // scale for x in moved[:periods])
         found = placed.get(tuple(x % scale for x in moved[:periods]) + moved[periods:])
-        if found is None:
+        if found is None or colours[found] != colour:
             return None
         images.append(found)
         shifts.append(cell)
-    symmetry = Symmetry(matrix, tuple(images), tuple(shifts))
-    return symmetry if all(_image(symmetry, arc) in arcs for arc in lattice.arcs) else None
+    return Symmetry(matrix, tuple(images), tuple(shifts))
 
 
 def _image(symmetry: Symmetry, arc: Arc) -> Arc:

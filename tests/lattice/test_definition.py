@@ -6,6 +6,8 @@ from fractions import Fraction
 from pathlib import Path
 
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from fleetcount.errors import InputError, LatticeError
 from fleetcount.lattice import checks, definition
@@ -230,3 +232,43 @@ def test_load_reads_the_file(tmp_path: Path) -> None:
     path = tmp_path / "brick.toml"
     path.write_bytes(GOOD.replace("\n", "\r\n").encode())
     assert definition.load(path) == definition.parse(GOOD, "elsewhere")
+
+
+VALUES = [
+    "1",
+    "-1",
+    "0.5",
+    "nan",
+    '""',
+    '"1/2"',
+    "true",
+    "[]",
+    "[[]]",
+    "{}",
+    "[{}]",
+    "1979-05-27",
+    "9" * 18,
+    '"\\u0000"',
+]
+
+
+@settings(max_examples=200, deadline=None)
+@given(st.integers(0, GOOD.count(" = ") - 1), st.sampled_from(VALUES), st.sampled_from(["", *VALUES]))
+def test_any_value_anywhere(place: int, value: str, more: str) -> None:
+    """Whatever value stands in whatever place, the file is read or refused with one clear line."""
+    lines = GOOD.splitlines()
+    number = [n for n, line in enumerate(lines) if " = " in line][place]
+    lines[number] = f"{lines[number].partition(' = ')[0]} = {f'[{value}, {more}]' if more else value}"
+    try:
+        definition.parse("\n".join(lines), "bad.toml")
+    except LatticeError as error:
+        assert error.mend and str(error).startswith("bad.toml") and "\n" not in str(error)
+
+
+@settings(max_examples=200, deadline=None)
+@given(st.text())
+def test_any_text(text: str) -> None:
+    """Any text at all is refused with one clear line."""
+    with pytest.raises(LatticeError) as caught:
+        definition.parse(text, "bad.toml")
+    assert caught.value.mend and "\n" not in str(caught.value)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import pickle
 import random
 from fractions import Fraction
 
@@ -228,3 +229,31 @@ def test_arcs_count_not_only_places() -> None:
         text += f'[[arcs]]\nfrom = "a"\nto = "a"\ncell = {cell}\n'
     matrices = [g.matrix for g in symmetry.group(definition.parse(text, "right-up.toml"))]
     assert matrices == [((1, 0), (0, 1)), ((0, 1), (1, 0))]
+
+
+def test_a_large_disordered_cell() -> None:
+    """In a cell of 400 sites with one edge left out, only the symmetries of the gap remain, found quickly."""
+    size = 20
+    text = 'name = "gap"\ndimension = 2\nmetric = [[1, 0], [0, 1]]\n'
+    for x in range(size):
+        for y in range(size):
+            text += f'[[sites]]\nname = "s{x}.{y}"\nat = ["{x}/{size}", "{y}/{size}"]\n'
+            for u, v in ((x + 1, y), (x, y + 1)):
+                if (x, y, u) != (0, 0, 1):
+                    text += f'[[edges]]\nfrom = "s{x}.{y}"\nto = "s{u % size}.{v % size}"\n'
+                    text += f"cell = [{u // size}, {v // size}]\n"
+    lattice = definition.parse(text, "gap.toml")
+    assert lattice.warnings == ()
+    # The reflections in the line of the gap and in its middle, and both.
+    assert symmetry.order(lattice) == 4
+    # Orbits of the four on a torus of 20 x 20: the reflection in the line fixes two rows of it, that in the
+    # middle of the gap fixes no site.
+    assert len(symmetry.site_orbits(lattice)) == (400 + 40 + 0 + 0) // 4
+
+
+def test_the_hash_is_that_of_every_process() -> None:
+    """A lattice that went through pickle finds itself among those computed anew."""
+    lattice = catalogue.find("kagome")
+    copy = pickle.loads(pickle.dumps(lattice))
+    assert copy == lattice and hash(copy) == hash(lattice)
+    assert hash(lattice) == hash((lattice.dimension, lattice.periods, lattice.metric, lattice.arcs))
