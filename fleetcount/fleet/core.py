@@ -99,7 +99,7 @@ class Core:
         seconds, bundles = self.seconds(remaining, slots), []
         queue = list(waiting)
         for token in tokens:
-            nodes, units = 0.0, []
+            nodes, units = 0.0, list[UnitRow]()
             enough = seconds * self.pace.rate / self.pace.drift
             while queue and nodes < enough and len(units) < MOST_UNITS:
                 alone = self.deaths[queue[0].key] >= DEATHS_TO_GO_ALONE

@@ -67,14 +67,16 @@ def count_series(store: Store, series: Series, top: int, options: Options) -> Co
         HeldError: another coordinator holds the series.
         TrustError: what was counted contradicts itself or an earlier reading.
     """
+    check(series, top)
     method = registry.get(METHOD)
-    _check(method, series, top)
     if not _covered(store, series, top):
         _count(store, series, top, method, options)
     return tables.view(store, series).table.cut(top)
 
 
-def _check(method: Method, series: Series, top: int) -> None:
+def check(series: Series, top: int) -> None:
+    """Refuse what cannot be counted before a ledger is opened: SeriesError or InputError."""
+    method = registry.get(METHOD)
     if top < 0:
         raise SeriesError(f"length {top} is negative", where="--to", mend="lengths begin at 0")
     reason = method.refuses(series)

@@ -37,7 +37,7 @@ class DaskCrew:
     def slots(self) -> int:
         now = time.monotonic()
         if now - self._looked >= _LOOK_AGAIN or not self._slots:
-            self._slots = sum(self._client.sync(self._client.scheduler.ncores_running).values())
+            self._slots = running_threads(self._client)
             self._looked = now
         return self._slots
 
@@ -69,6 +69,12 @@ class DaskCrew:
             return error
         finally:
             future.release()
+
+
+def running_threads(client: Client) -> int:
+    """Threads of the workers that are running, not paused or leaving."""
+    scheduler: Any = client.scheduler
+    return sum(client.sync(scheduler.ncores_running).values())
 
 
 def on_client(client: Client) -> DaskCrew:

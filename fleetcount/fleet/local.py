@@ -19,7 +19,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from fleetcount.errors import FleetError
-from fleetcount.fleet.dask_crew import DaskCrew
+from fleetcount.fleet.dask_crew import DaskCrew, running_threads
 from fleetcount.fleet.work import StopFlag
 from fleetcount.host import machine_name
 from fleetcount.series.definition import Series
@@ -28,7 +28,7 @@ if TYPE_CHECKING:
     from distributed import Client
 
 _START_SECONDS = 120.0
-_BAD_STARTS = 3
+_BAD_STARTS = 5
 
 
 class LocalFleet:
@@ -40,7 +40,7 @@ class LocalFleet:
         self._plan = b""
         self._address = b""
         self._resources = contextlib.ExitStack()
-        self._errors = self._resources.enter_context(tempfile.TemporaryFile())
+        self._errors = tempfile.TemporaryFile()  # noqa: SIM115 - closed by `close`
         self._client: Client | None = None
         self._starts = 0
         self._closing = False
@@ -53,7 +53,12 @@ class LocalFleet:
 
     def launch(self, series: Series, method: str, top: int) -> None:
         """Start the worker process; it imports what it needs and prepares its kernels by itself."""
-        plan: dict[str, Any] = {"series": series.canonical(), "method": method, "top": top}
+        plan: dict[str, Any] = {
+            "series": series.canonical(),
+            "written": series.written(),
+            "method": method,
+            "top": top,
+        }
         plan |= {"threads": self.cores, "name": machine_name()}
         self._plan = json.dumps(plan).encode() + b"\n"
         self._spawn()
@@ -67,7 +72,7 @@ class LocalFleet:
         dask.config.set(
             {"distributed.scheduler.work-stealing": False, "distributed.scheduler.allowed-failures": 0}
         )
-        cluster = LocalCluster(  # type: ignore[no-untyped-call]
+        cluster = LocalCluster(
             n_workers=0,
             processes=False,
             protocol="tcp://",
@@ -76,7 +81,7 @@ class LocalFleet:
             silence_logs=logging.CRITICAL,
         )
         self._resources.callback(cluster.close, timeout=1)
-        self._client = self._resources.enter_context(Client(cluster))  # type: ignore[no-untyped-call]
+        self._client = self._resources.enter_context(Client(cluster))
         self._address = json.dumps(cluster.scheduler_address).encode() + b"\n"
         self._tell(self._address)
         crew = DaskCrew(self._client, self._stop, self._keep_alive)
@@ -94,6 +99,7 @@ class LocalFleet:
         self._end_process()
         with contextlib.suppress(Exception):
             self._resources.close()
+        self._errors.close()
 
     def _end_process(self) -> None:
         process, self._process = self._process, None
@@ -136,22 +142,13 @@ class LocalFleet:
     def _keep_alive(self) -> None:
         """Start the worker again if it has gone; give up when it goes again and again without having counted."""
         if self._closing or self._process is None or self._process.poll() is None:
-            if (
-                self._client is not None
-                and self._process is not None
-                and self._starts > 1
-                and self._counting()
-            ):
+            if self._starts > 1 and self._client is not None and running_threads(self._client):
                 self._starts = 1
             return
         if self._starts >= _BAD_STARTS:
             raise FleetError("the worker process ends as soon as it starts", mend=self._last_words())
         self._end_process()
         self._spawn()
-
-    def _counting(self) -> bool:
-        assert self._client is not None
-        return bool(self._client.sync(self._client.scheduler.ncores_running))
 
     def _last_words(self) -> str:
         self._errors.seek(0)

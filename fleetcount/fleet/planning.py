@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 import uuid
 from collections.abc import Callable
+from functools import partial
 
 from fleetcount.fleet.work import Task, answer_unit
 from fleetcount.ledger.record import OpeningRecord
@@ -73,7 +74,7 @@ def divide_roots(
                 unit.key,
                 unit.factor,
                 token,
-                lambda k=unit.key: method.divide(task.series, lengths, k),
+                partial(method.divide, task.series, lengths, unit.key),
             )
             answers.append(answer)
             planned += len(counted.children)

@@ -9,6 +9,7 @@ import json
 import time
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from functools import partial
 
 from fleetcount.errors import FleetcountError
 from fleetcount.host import machine_name
@@ -48,7 +49,7 @@ class HandOut:
         """As bytes, to be sent."""
         fields = {
             "series": self.task.series.canonical(),
-            "name": self.task.series.lattice.name,
+            "written": self.task.series.written(),
             "reading": self.task.reading,
             "method": self.task.method,
             "lengths": self.task.lengths,
@@ -62,7 +63,7 @@ class HandOut:
     def unpack(cls, sent: bytes) -> HandOut:
         """The hand-out of such bytes."""
         fields = json.loads(sent)
-        series = from_canonical(fields["series"], fields["name"])
+        series = from_canonical(fields["series"], fields["written"])
         task = Task(series, fields["reading"], fields["method"], fields["lengths"])
         units = tuple((key, int(factor)) for key, factor in fields["units"])
         return cls(task, fields["token"], units, fields["seconds"])
@@ -143,7 +144,7 @@ def count_bundle(hand_out: HandOut, stop: StopFlag) -> HandBack:
                 key,
                 factor,
                 hand_out.token,
-                lambda k=key: method.count(task.series, lengths, k, clock),
+                partial(method.count, task.series, lengths, key, clock),
             )
         except FleetcountError as error:
             back.failed.append((key, str(error)))

@@ -25,8 +25,8 @@ def main() -> None:
     threading.Thread(target=_listen, args=(lines,), daemon=True).start()
     plan = json.loads(lines.get())
     _prepare(plan)
-    _serve_address = json.loads(lines.get())
-    asyncio.run(_serve(_serve_address, plan["threads"], plan["name"]))
+    address = json.loads(lines.get())
+    asyncio.run(_serve(address, plan["threads"], plan["name"]))
 
 
 def _listen(lines: queue.SimpleQueue[bytes]) -> None:
@@ -43,7 +43,7 @@ def _prepare(plan: dict[str, Any]) -> None:
     from fleetcount.methods import registry
     from fleetcount.series.definition import from_canonical
 
-    series = from_canonical(plan["series"])
+    series = from_canonical(plan["series"], plan["written"])
     registry.get(plan["method"]).prepare(series, range(plan["top"] + 1))
 
 
@@ -51,7 +51,7 @@ async def _serve(address: str, threads: int, name: str) -> None:
     from distributed import Worker
 
     logging.getLogger("distributed").setLevel(logging.CRITICAL)
-    worker = await Worker(  # type: ignore[no-untyped-call]
+    worker = await Worker(
         address,
         nthreads=threads,
         name=name,

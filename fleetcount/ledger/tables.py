@@ -115,7 +115,7 @@ def _compare(series: Series, tables: Sequence[tuple[ReadingRow, Tally]]) -> None
             ours, theirs = (_row(t, n) for t in (reference, table))
             if ours != theirs:
                 raise TrustError(
-                    f"readings {widest.reading[:8]} and {row.reading[:8]} do not agree at length {n}: {ours} and {theirs}",
+                    f"readings {widest.reading[:8]} and {row.reading[:8]} disagree at length {n}: {ours} and {theirs}",
                     where=series.title(),
                     mend="one of them is wrong; count the series once more to see which",
                 )

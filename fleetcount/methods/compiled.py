@@ -15,8 +15,8 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
-import numba
 from filelock import FileLock
+from numba.core import config as _numba_config
 
 from fleetcount.host import cache_directory
 from fleetcount.methods.engine import engine_digest, versions
@@ -65,13 +65,14 @@ def kernel(
 def _filling(method: str) -> Any:
     place = folder(method)
     place.mkdir(parents=True, exist_ok=True)
-    old = numba.config.CACHE_DIR
+    config: Any = _numba_config  # its settings are not declared
+    old = config.CACHE_DIR
     with FileLock(place / "filling.lock"):
-        numba.config.CACHE_DIR = str(place)
+        config.CACHE_DIR = str(place)
         try:
             yield
         finally:
-            numba.config.CACHE_DIR = old
+            config.CACHE_DIR = old
 
 
 def is_warm(method: str, name: str, traits: tuple[object, ...]) -> bool:

@@ -10,6 +10,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
+from typing import Any
 
 from fleetcount.errors import InternalError, SeriesError
 from fleetcount.lattice.model import Arc, Lattice, Site
@@ -44,7 +45,7 @@ class Series:
             return 1
         return len(self.lattice.sites)
 
-    def canonical(self) -> dict[str, object]:
+    def canonical(self) -> dict[str, Any]:
         """The canonical form, of which the digest is taken."""
         return {
             "format": FORMAT,
@@ -66,10 +67,11 @@ class Series:
         """SHA-256 of the canonical text: the identity of the series."""
         return canonical.digest(self.text)
 
-    def written(self) -> dict[str, object]:
+    def written(self) -> dict[str, Any]:
         """The definition in the user's words: names, for screens and for the ledger."""
         start = None if self.start is None else self.lattice.sites[self.start].name
-        return {"lattice": self.lattice.name, "object": self.object, "start": start}
+        sites = [site.name for site in self.lattice.sites]
+        return {"lattice": self.lattice.name, "object": self.object, "start": start, "sites": sites}
 
     def title(self) -> str:
         """One line for people: `square walk`, `dice walk from hub`."""
@@ -102,11 +104,12 @@ def define(lattice: Lattice, object_name: str, start: str | None = None) -> Seri
     return Series(lattice, rule.name, None if start is None else names.index(start))
 
 
-def from_canonical(form: Mapping[str, object], name: str = "from a ledger") -> Series:
-    """The series of a canonical form, as a ledger or a hand-out carries it; names are lost."""
+def from_canonical(form: Mapping[str, Any], written: Mapping[str, Any]) -> Series:
+    """The series of a canonical form, as a ledger or a hand-out carries it, with the names of `Series.written`."""
+    name = str(written.get("lattice", "unnamed"))
     try:
+        names = written.get("sites") or [str(i) for i in range(len(form["lattice"]["positions"]))]
         body = form["lattice"]
-        assert isinstance(body, dict)
         lattice = Lattice(
             name=name,
             title=name,
@@ -116,16 +119,17 @@ def from_canonical(form: Mapping[str, object], name: str = "from a ledger") -> S
             metric_is="exact",
             up=tuple(int(i == body["dimension"] - 1) for i in range(body["dimension"])),
             sites=tuple(
-                Site(str(i), tuple(Fraction(x) for x in at)) for i, at in enumerate(body["positions"])
+                Site(str(site), tuple(Fraction(x) for x in at))
+                for site, at in zip(names, body["positions"], strict=True)
             ),
             arcs=tuple(Arc(s, t, tuple(cell)) for s, t, cell in body["arcs"]),
             one_way=body["one_way"],
         )
-        object_name, version = form["object"]  # type: ignore[misc]
-        series = Series(lattice, object_name, form["start"])  # type: ignore[arg-type]
+        object_name, version = form["object"]
+        series = Series(lattice, object_name, form["start"])
         if OBJECTS[object_name].version != version:
             raise SeriesError(f"the object {object_name} is of version {version}, not known here")
-    except (KeyError, TypeError, ValueError, AssertionError) as error:
+    except (KeyError, TypeError, ValueError) as error:
         raise SeriesError("not the canonical form of a series", where=name) from error
     if series.canonical() != form:
         raise InternalError("a canonical form does not give itself back", where=name)

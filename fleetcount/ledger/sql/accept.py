@@ -18,6 +18,7 @@ from fleetcount.ledger import judging, record, states
 from fleetcount.ledger.record import TallyRecord
 from fleetcount.ledger.sql.lease import Locked, note
 from fleetcount.ledger.sql.schema import tallies, units
+from fleetcount.ledger.sql.summing import stored_in
 from fleetcount.ledger.sql.units import batches, by_key, extend, new_unit, reading_rows
 from fleetcount.ledger.states import SETTLED, State
 from fleetcount.ledger.store import Answer, ReadingRow, Verdict
@@ -110,7 +111,7 @@ def _known(
             if unit.state in SETTLED:
                 settled[row.id] = unit
     for some in batches(settled):
-        query = sa.select(tallies.c.unit, tallies.c.stored).where(tallies.c.unit.in_(some))
+        query = sa.select(tallies.c.unit, stored_in(tallies)).where(tallies.c.unit.in_(some))
         for row in connection.execute(query):
             settled[row.unit].tally = TallyRecord.parse(record.unpack(row.stored))
     return known

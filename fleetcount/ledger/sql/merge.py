@@ -7,7 +7,7 @@ import sqlalchemy as sa
 from fleetcount.errors import LedgerError
 from fleetcount.ledger.sql.looking import census
 from fleetcount.ledger.sql.schema import readings, series, tallies, units
-from fleetcount.ledger.sql.summing import Sum, fields_of, stored_text, stream
+from fleetcount.ledger.sql.summing import Sum, fields_of, stored_in, stored_text, stream
 from fleetcount.ledger.sql.walk import Walk
 from fleetcount.ledger.store import Merged
 
@@ -18,7 +18,9 @@ def merge(connection: sa.Connection, digest: str, reading: str, check: bool) -> 
     if head is None:
         raise LedgerError("the ledger has no such series", where=f"series {digest[:12]}")
     openings = connection.execute(
-        sa.select(readings).where(readings.c.series == head.id).order_by(readings.c.number)
+        sa.select(*(column for column in readings.c if column.name != "stored"), stored_in(readings))
+        .where(readings.c.series == head.id)
+        .order_by(readings.c.number)
     ).all()
     chosen = next((row for row in openings if row.reading == reading), None)
     if chosen is None:
@@ -50,9 +52,10 @@ def _disputed(connection: sa.Connection, number: int) -> tuple[str, ...]:
 def _add_unchecked(connection: sa.Connection, number: int, total: Sum) -> None:
     """Sum a reading's tallies, believing the weights of the units table."""
     query = (
-        sa.select(units.c.key, units.c.weight, units.c.seconds, tallies.c.checksum, tallies.c.stored)
+        sa.select(units.c.key, units.c.weight, units.c.seconds, tallies.c.checksum, stored_in(tallies))
         .join_from(tallies, units)
         .where(units.c.reading == number)
     )
-    for row in stream(connection, query):
-        total.add(fields_of(stored_text(row, f"unit {row.key}")), int(row.weight), row.seconds)
+    with stream(connection, query) as rows:
+        for row in rows:
+            total.add(fields_of(stored_text(row, f"unit {row.key}")), int(row.weight), row.seconds)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections import Counter, defaultdict
 from collections.abc import Iterator
+from contextlib import contextmanager
 from typing import Any
 
 import sqlalchemy as sa
@@ -53,9 +54,19 @@ class Sum:
         return table
 
 
-def stream(connection: sa.Connection, query: sa.Select[Any]) -> Iterator[Any]:
+@contextmanager
+def stream(connection: sa.Connection, query: sa.Select[Any]) -> Iterator[Iterator[Any]]:
     """Rows one by one, without having them all in memory."""
-    return iter(connection.execution_options(yield_per=ROWS_AT_ONCE).execute(query))
+    result = connection.execute(query, execution_options={"yield_per": ROWS_AT_ONCE})
+    try:
+        yield result
+    finally:
+        result.close()
+
+
+def stored_in(table: sa.Table) -> sa.ColumnElement[bytes]:
+    """The stored texts of a table, as bytes even where another hand has put letters."""
+    return sa.cast(table.c.stored, sa.LargeBinary).label("stored")
 
 
 def stored_text(row: Any, name: str) -> str:

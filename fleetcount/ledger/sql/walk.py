@@ -9,7 +9,7 @@ tally. So memory grows with the frontier only.
 from __future__ import annotations
 
 import json
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from dataclasses import replace
 from operator import itemgetter
 from typing import Any, NamedTuple
@@ -20,7 +20,7 @@ from fleetcount.errors import TrustError
 from fleetcount.ledger import judging, record, states
 from fleetcount.ledger.record import OpeningRecord, TallyRecord
 from fleetcount.ledger.sql.schema import readings, tallies, units
-from fleetcount.ledger.sql.summing import Sum, fields_of, stored_text, stream
+from fleetcount.ledger.sql.summing import Sum, fields_of, stored_in, stored_text, stream
 from fleetcount.ledger.sql.units import reading_row
 from fleetcount.ledger.states import MOVES, OPEN, SETTLED
 from fleetcount.series import canonical
@@ -86,24 +86,32 @@ class Walk:
 
     def run(self) -> None:
         """Check everything and sum. A broken link is held back until no unit can be named more exactly."""
+        where = f"series {self.head.digest[:12]}"
         if canonical.digest(self.head.canonical) != self.head.digest:
-            raise TrustError("its definition has been changed", where=f"series {self.head.digest[:12]}")
+            raise TrustError("its definition has been changed", where=where)
         self._find_settled_without_tally()
-        waiting = list(reversed(self.openings))
-        for row in self._tallies():
-            while waiting and waiting[-1].number <= row.number:
-                self._open(waiting.pop())
-            self._settle(row)
-        while waiting:
-            self._open(waiting.pop())
-        self._compare_frontier()
+        try:
+            self._follow_chain()
+            self._compare_frontier()
+        except (TypeError, ValueError) as error:
+            raise TrustError(f"a table holds what does not belong there ({error})", where=where) from None
         if self.broken is None and (self.number, self.link) != (self.head.records, self.head.head):
             self.broken = TrustError(
                 f"its chain has {self.number} records, {self.head.records} were written: the end is missing",
-                where=f"series {self.head.digest[:12]}",
+                where=where,
             )
         if self.broken is not None:
             raise self.broken
+
+    def _follow_chain(self) -> None:
+        waiting = list(reversed(self.openings))
+        with stream(self.connection, self._tallies()) as rows:
+            for row in map(_Entry._make, rows):
+                while waiting and waiting[-1].number <= row.number:
+                    self._open(waiting.pop())
+                self._settle(row)
+        while waiting:
+            self._open(waiting.pop())
 
     def _name(self, key: str | None, number: int | None) -> str:
         return judging.name_unit(str(key), self.names.get(number or 0, "unknown"))
@@ -123,17 +131,18 @@ class Walk:
                 f"it is {row.state}, but its tally is missing", where=judging.name_unit(row.key, row.reading)
             )
 
-    def _tallies(self) -> Iterator[_Entry]:
-        beside = ("number", "stored", "checksum", "link", "token", "accepted")
+    def _tallies(self) -> sa.Select[Any]:
+        """The columns of `_Entry`, in their order."""
+        beside = ("checksum", "link", "token", "accepted")
         counted = ("machine", "engine", "versions", "started", "finished")
         unit = ("key", "reading", "parent", "factor", "weight", "state", "nodes", "seconds")
-        query = (
-            sa.select(*(tallies.c[name] for name in beside + counted), *(units.c[name] for name in unit))
+        columns = [tallies.c[name] for name in beside + counted] + [units.c[name] for name in unit]
+        return (
+            sa.select(tallies.c.number, stored_in(tallies), *columns)
             .join_from(tallies, units, tallies.c.unit == units.c.id, isouter=True)
             .where(tallies.c.series == self.head.id)
             .order_by(tallies.c.number)
         )
-        return map(_Entry._make, stream(self.connection, query))
 
     def _follow(self, row: Any, name: Callable[[], str]) -> None:
         """The next record of the chain must be the one that follows."""
@@ -234,15 +243,16 @@ class Walk:
             .outerjoin(tallies, self._its_tally)
             .where(readings.c.series == self.head.id, tallies.c.unit.is_(None))
         )
-        for row in stream(self.connection, query):
-            derived = self.frontier.get(row.reading, {}).pop(row.key, None)
-            if derived is None:
-                name = self._name(row.key, row.reading)
-                raise TrustError("no record names it: it was added by another hand", where=name)
-            self._compare_unit(row, derived)
-            if row.state not in OPEN:
-                name = self._name(row.key, row.reading)
-                raise TrustError(f"it is {row.state}, which is no state without a tally", where=name)
+        with stream(self.connection, query) as rows:
+            for row in rows:
+                derived = self.frontier.get(row.reading, {}).pop(row.key, None)
+                if derived is None:
+                    name = self._name(row.key, row.reading)
+                    raise TrustError("no record names it: it was added by another hand", where=name)
+                self._compare_unit(row, derived)
+                if row.state not in OPEN:
+                    name = self._name(row.key, row.reading)
+                    raise TrustError(f"it is {row.state}, which is no state without a tally", where=name)
         for number, left in self.frontier.items():
             if left:
                 raise TrustError(

@@ -44,7 +44,7 @@ class Calibration:
             -1 if (reach - self.reaches[-1]) % 2 == 0 or len(self.reaches) < 2 else -2
         )  # parity: see polygons
         steps = min(reach - self.reaches[last], _MOST / math.log(self.growth))
-        return max(1.0, self.nodes[last] * self.growth**steps)
+        return float(max(1.0, self.nodes[last] * self.growth**steps))
 
 
 def below(calibration: Calibration, top: int, prefix: Prefix, order: int, whole_order: int) -> float:

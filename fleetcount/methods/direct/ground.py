@@ -173,7 +173,9 @@ class Stack:
         """Empty arrays for lengths up to `top`."""
         small = [np.zeros(top + 3, dtype=np.int32) for _ in range(3)]
         wide = [np.zeros(top + 3, dtype=np.int64) for _ in range(2)]
-        return cls(*small, *wide, np.zeros(kernels.REGISTERS, dtype=np.int64))
+        path, arm, state = small
+        weight, sums = wide
+        return cls(path, arm, state, weight, sums, np.zeros(kernels.REGISTERS, dtype=np.int64))
 
     def arrays(self) -> tuple[Array, ...]:
         return (self.path, self.arm, self.state, self.weight, self.sums, self.reg)

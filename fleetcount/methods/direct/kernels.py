@@ -91,11 +91,7 @@ def walk_kernel(arms: int, arms_in: int, one_way: bool) -> Callable[..., bool]:
                     nodes += 1
                     one += f
                     for k in range(arms):
-                        if one_way:
-                            t = free[nxt[x, k]] - back[x, k]
-                        else:
-                            t = free[nxt[x, k]] - 1
-                        two += max(t, 0)
+                        two += max(free[nxt[x, k]] - (back[x, k] if one_way else 1), 0)
             sums[depth + 2] += factor * one
             sums[depth + 3] += factor * two
             free[there] += VISITED
@@ -106,7 +102,7 @@ def walk_kernel(arms: int, arms_in: int, one_way: bool) -> Callable[..., bool]:
         reg[NODES] += nodes
         return False
 
-    return run  # type: ignore[no-any-return]
+    return run
 
 
 def polygon_kernel(arms: int) -> Callable[..., bool]:
@@ -170,4 +166,4 @@ def polygon_kernel(arms: int) -> Callable[..., bool]:
         reg[NODES] += nodes
         return False
 
-    return run  # type: ignore[no-any-return]
+    return run

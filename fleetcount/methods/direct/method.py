@@ -68,7 +68,7 @@ class DirectMethod:
         """One unit for each kind of start site, weighted by how many of the cell's sites are of that kind."""
         top = max(lengths)
         least = self._rooted_at_least(series, top)
-        starts = {s: 1 for s in range(len(series.lattice.sites))} if least else self._starts(series)
+        starts = dict.fromkeys(range(len(series.lattice.sites)), 1) if least else self._starts(series)
         each = _calibrate(series, least).total(top) / len(starts)
         return tuple(
             Child(keys.Prefix(s, least, ()).key(), weight, each) for s, weight in sorted(starts.items())
@@ -209,7 +209,7 @@ def _calibrate(series: Series, least: bool) -> Calibration:
 def _calibration(series: Series, least: bool) -> Calibration:
     """Count to growing reach for a moment, from one start of each kind."""
     method, trial = DirectMethod(), Calibrator()
-    starts = {s: 1 for s in range(len(series.lattice.sites))} if least else method._starts(series)
+    starts = dict.fromkeys(range(len(series.lattice.sites)), 1) if least else method._starts(series)
     for reach in counting(4):
         nodes, seconds = 0, 0.0
         for start in starts:

@@ -1,0 +1,77 @@
+"""The command `count`: the main job."""
+
+from __future__ import annotations
+
+import math
+import time
+from typing import Annotated
+
+import typer
+
+from fleetcount.cli import options
+from fleetcount.errors import InputError, StoppedError
+
+
+def register(app: typer.Typer) -> None:
+    """Add the command to an app."""
+    app.command("count")(count)
+
+
+def count(
+    lattice: Annotated[
+        str, typer.Argument(metavar="LATTICE", help="A built-in lattice, or the path of a lattice file.")
+    ],
+    object_name: Annotated[str, typer.Argument(metavar="OBJECT", help="What to count: walk, polygon.")],
+    to: Annotated[int, typer.Option("--to", metavar="N", help="Greatest length.")],
+    start: options.Start = None,
+    ledger: options.Ledger = None,
+    cores: Annotated[int | None, typer.Option(metavar="K", help="Cores to count on. Default: all.")] = None,
+    wait: Annotated[
+        bool, typer.Option("--wait", help="Wait while another process counts this series.")
+    ] = False,
+    ledger_size: Annotated[
+        float, typer.Option(metavar="GB", help="Plan the units so that the ledger stays under this size.")
+    ] = 1.0,
+    per_site: options.PerSite = False,
+    as_json: options.AsJson = False,
+    as_csv: options.AsCsv = False,
+    plain: options.Plain = False,
+    quiet: Annotated[bool, typer.Option("--quiet", help="No progress, only the table.")] = False,
+) -> None:
+    """Count a series up to a length, or go on where an earlier run was stopped.
+
+    Walks are counted as directed from a fixed start; polygons per cell, without root or sense.
+    """
+    from fleetcount.cli.screen import Screen, duration
+    from fleetcount.fleet.counting import Options, check, count_series
+    from fleetcount.ledger.access import open_store
+
+    options.one_form(json=as_json, csv=as_csv, plain=plain)
+    if cores is not None and not 1 <= cores <= 1024:
+        raise InputError(f"{cores} cores", where="--cores", mend="give a number from 1 to 1024")
+    if not 0.001 <= ledger_size <= 1e6:
+        raise InputError(f"{ledger_size} GB", where="--ledger-size", mend="give a size from 0.001 to 1000000")
+    series = options.define(lattice, object_name, start)
+    began = time.monotonic()
+    with Screen(quiet) as screen:
+        how = Options(
+            cores=cores, wait=math.inf if wait else 0.0, ledger_bytes=ledger_size * 1e9, observer=screen
+        )
+        check(series, to)
+        with open_store(ledger, create=True) as store:
+            for notice in store.notices:
+                screen.note(notice)
+            try:
+                table = count_series(store, series, to, how)
+            except StoppedError:
+                raise StoppedError(
+                    "stopped; what was counted is kept",
+                    where=store.location,
+                    mend="the same line goes on from there",
+                ) from None
+            location = store.location
+    if per_site:
+        table = table.per_site()
+    options.give(table, json=as_json, csv=as_csv, plain=plain)
+    if not quiet:
+        options.say(f"{duration(time.monotonic() - began)}; every tally is in {location}")
