@@ -6,6 +6,7 @@ import itertools
 import tempfile
 import warnings
 from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from urllib.parse import urlsplit, urlunsplit
 
@@ -32,10 +33,28 @@ def postgres_server() -> Iterator[str]:
 @pytest.fixture
 def postgres(postgres_server: str) -> Iterator[str]:
     """The URL of an empty PostgreSQL database, dropped after the test."""
+    with database(postgres_server) as url:
+        yield url
+
+
+@contextmanager
+def database(server: str, copy: bool = False) -> Iterator[str]:
+    """The URL of a new database of the server, dropped afterwards.
+
+    Args:
+        server: URL of a database of the server.
+        copy: the new one is a copy of that one, which nobody may be using; else it is empty.
+    """
     import psycopg
 
+    parts = urlsplit(server)
     name = f"test_{next(_numbers)}"
-    with psycopg.connect(postgres_server, autocommit=True) as connection:
-        connection.execute(f"CREATE DATABASE {name}")
-        yield urlunsplit(urlsplit(postgres_server)._replace(path=f"/{name}"))
-        connection.execute(f"DROP DATABASE {name} WITH (FORCE)")
+    like = f" TEMPLATE {parts.path[1:]}" if copy else ""
+    office = urlunsplit(parts._replace(path="/postgres"))
+    with psycopg.connect(office, autocommit=True) as connection:
+        connection.execute(f"CREATE DATABASE {name}{like}")
+    try:
+        yield urlunsplit(parts._replace(path=f"/{name}"))
+    finally:
+        with psycopg.connect(office, autocommit=True) as connection:
+            connection.execute(f"DROP DATABASE {name} WITH (FORCE)")
