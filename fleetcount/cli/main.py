@@ -12,7 +12,6 @@ import sys
 import traceback
 from collections.abc import Sequence
 from importlib import import_module
-from importlib.util import find_spec
 from typing import Annotated, NoReturn
 
 import typer
@@ -39,8 +38,6 @@ def build() -> typer.Typer:
     )
     app.callback()(_program)
     for group in GROUPS:
-        if find_spec(f"fleetcount.cli.{group}") is None:
-            continue
         import_module(f"fleetcount.cli.{group}").register(app)
     return app
 
