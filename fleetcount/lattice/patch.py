@@ -38,7 +38,7 @@ class Patch:
         start: class of the start, a site of `lattice`.
         radius: steps along arcs, forward.
         next: int32 [sites + 1, arms], the neighbour along each arm, 0 where there is none, or none inside.
-            Arms are numbered as in `lattice.arms`; `arms` is the greatest number of them.
+            Arms are numbered as in `lattice.arms`; `arms` is the greatest number of them, or the `width` asked for.
         previous: int32 [sites + 1, arms in], the neighbours inside from which an arc comes, in the order of
             `lattice.arms_in`, 0 where there is none.
         back: uint8 [sites + 1, arms], 1 where the arm leads to a site inside and an arc leads back.
@@ -72,7 +72,12 @@ class Patch:
 
 
 def build(
-    lattice: Lattice, start: int, radius: int, allowed: Allowed | None = None, limit: int | None = None
+    lattice: Lattice,
+    start: int,
+    radius: int,
+    allowed: Allowed | None = None,
+    limit: int | None = None,
+    width: int = 0,
 ) -> Patch:
     """The patch of all sites that `radius` steps from the start can reach without leaving the region.
 
@@ -80,28 +85,34 @@ def build(
         start: the site class where walks start; in cell 0.
         allowed: which sites are in the region; the start always is.
         limit: bytes it may take; by default 4 GB or what is available, whichever is less.
+        width: columns that the tables of neighbours have at least; what is too wide for the lattice is zeros.
 
     Raises:
         InputError: the patch would not fit; it says how much it would need.
     """
-    limit = check_fits(lattice, start, radius, allowed, limit)
+    limit = check_fits(lattice, start, radius, allowed, limit, width)
     keys = Keys(lattice, radius + 1)
     shells = []
     sites = 0
     for shell in _shells(keys, start, radius + (allowed is not None), allowed):
         shells.append(shell)
         sites += len(shell)
-        _check_size(lattice, radius, sites, 2 * limit)
-    return _assemble(keys, shells, start, radius, allowed is not None)
+        _check_size(lattice, radius, sites, 2 * limit, width)
+    return _assemble(keys, shells, start, radius, allowed is not None, width)
 
 
 def check_fits(
-    lattice: Lattice, start: int, radius: int, allowed: Allowed | None = None, limit: int | None = None
+    lattice: Lattice,
+    start: int,
+    radius: int,
+    allowed: Allowed | None = None,
+    limit: int | None = None,
+    width: int = 0,
 ) -> int:
     """Raise InputError, as `build` does, if the patch would not fit; returns the limit in bytes."""
     _check_arguments(lattice, start, radius)
     limit = _memory() if limit is None else limit
-    _check_size(lattice, radius, sites_needed(lattice, start, radius, allowed), limit)
+    _check_size(lattice, radius, sites_needed(lattice, start, radius, allowed), limit, width)
     return limit
 
 
@@ -130,10 +141,10 @@ def sites_needed(lattice: Lattice, start: int, radius: int, allowed: Allowed | N
     return max(sizes[-1], round(float(growth(float(min(radius, 10**9))))))
 
 
-def bytes_needed(lattice: Lattice, sites: int) -> int:
+def bytes_needed(lattice: Lattice, sites: int, width: int = 0) -> int:
     """Bytes that building a patch of so many sites takes, arrays and work space."""
-    arms = max(len(a) for a in lattice.arms)
-    arms_in = max(len(a) for a in lattice.arms_in)
+    arms = max(width, *map(len, lattice.arms))
+    arms_in = max(width, *map(len, lattice.arms_in))
     held = 5 * arms + 4 * arms_in + 8 * lattice.periods + 8
     return (sites + 1) * (held + 72)
 
@@ -171,8 +182,8 @@ def _check_arguments(lattice: Lattice, start: int, radius: int) -> None:
         )
 
 
-def _check_size(lattice: Lattice, radius: int, sites: int, limit: int) -> None:
-    needed = bytes_needed(lattice, sites)
+def _check_size(lattice: Lattice, radius: int, sites: int, limit: int, width: int) -> None:
+    needed = bytes_needed(lattice, sites, width)
     if needed > limit or sites > 2**31 - 2:
         what = f"the patch of radius {radius} needs about {_amount(needed)} of memory"
         mend = f"at most {_amount(limit)} can be used; ask for a smaller length or a smaller region"
@@ -212,7 +223,7 @@ def _shells(keys: Keys, start: int, radius: int, allowed: Allowed | None) -> Ite
 
 
 def _assemble(
-    keys: Keys, shells: Sequence[NDArray[np.int64]], start: int, radius: int, beyond: bool
+    keys: Keys, shells: Sequence[NDArray[np.int64]], start: int, radius: int, beyond: bool, width: int
 ) -> Patch:
     """Number the sites and look up their neighbours; `beyond`: the last shell may lie past the radius."""
     lattice = keys.lattice
@@ -232,7 +243,7 @@ def _assemble(
         return np.where((ordered[place] == wanted) & exists, numbers[place], 0).astype(np.int32)
 
     kinds = kind[rows]
-    following = np.zeros((sites + 1, keys.out.arms), dtype=np.int32)
+    following = np.zeros((sites + 1, max(width, keys.out.arms)), dtype=np.int32)
     free = np.zeros(sites + 1, dtype=np.int16)
     for arm in range(keys.out.arms):
         exists = keys.out.exists[kinds, arm]
@@ -240,11 +251,14 @@ def _assemble(
         free[rows] += (near != 0) if beyond else exists
         near[near > sites] = 0
         following[rows, arm] = near
-    previous = np.zeros((sites + 1, keys.into.arms), dtype=np.int32)
+    previous = np.zeros((sites + 1, max(width, keys.into.arms)), dtype=np.int32)
     for arm in range(keys.into.arms):
         near = look_up(asked + keys.into.shift[kinds, arm], keys.into.exists[kinds, arm])
         near[near > sites] = 0
         previous[rows, arm] = near
+    back = np.zeros(following.shape, dtype=np.uint8)
+    back[:, : keys.out.arms] = keys.back[kind]
+    back[following == 0] = 0
     cells = np.zeros((sites + 1, lattice.periods), dtype=keys.cell_type)
     cells[rows] = keys.cells(asked)
     depth = np.repeat(np.arange(len(inside), dtype=np.int32), [len(shell) for shell in inside])
@@ -254,7 +268,7 @@ def _assemble(
         radius=radius,
         next=following,
         previous=previous,
-        back=(keys.back[kind] & (following != 0)).astype(np.uint8),
+        back=back,
         kind=kind,
         free=free,
         depth=np.concatenate((np.zeros(1, dtype=np.int32), depth)),

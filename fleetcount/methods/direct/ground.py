@@ -25,6 +25,9 @@ _building = threading.Lock()
 START = 1
 """The start's number in every patch."""
 
+WIDTHS = (2, 3, 4, 6, 8, 10, 12, 16, 24, 32, 48, 64)
+"""Widths of the tables that kernels are compiled for: those of the built-in lattices, and few between."""
+
 
 @dataclass(frozen=True)
 class Ground:
@@ -78,7 +81,7 @@ def patch_of(series: Series, start: int, least: bool, top: int) -> Patch:
     further from its root than half its length.
     """
     allowed = _greater(series.lattice, start) if least else None
-    return build(series.lattice, start, _radius(series, top), allowed)
+    return build(series.lattice, start, _radius(series, top), allowed, width=_width(series.lattice))
 
 
 def check_reach(series: Series, starts: Iterable[int], top: int) -> None:
@@ -90,7 +93,7 @@ def check_reach(series: Series, starts: Iterable[int], top: int) -> None:
             mend=f"ask for at most {kernels.VISITED // 2}",
         )
     for start in starts:
-        check_fits(series.lattice, start, _radius(series, top))
+        check_fits(series.lattice, start, _radius(series, top), width=_width(series.lattice))
 
 
 def _radius(series: Series, top: int) -> int:
@@ -105,9 +108,11 @@ def _ground(series: Series, start: int, least: bool, top: int) -> Ground:
     patch = patch_of(series, start, least, top)
     # No symmetry but the identity keeps a total order of the sites that translations keep.
     states = without_symmetry(lattice) if least else symmetry_states(lattice, start)
-    images = np.array(states.images, dtype=np.int32)
-    onward = np.array(states.onward, dtype=np.int32)
-    return Ground(series, start, least, top, patch, states, images, onward, _kernel(series, patch))
+    shape = (len(states.orders), len(lattice.sites), _width(lattice))
+    images, onward = np.ones(shape, dtype=np.int32), np.zeros(shape, dtype=np.int32)
+    for table, known in ((images, states.images), (onward, states.onward)):
+        table[:, :, : len(known[0][0])] = known
+    return Ground(series, start, least, top, patch, states, images, onward, _kernel(series))
 
 
 def _greater(lattice: Lattice, start: int) -> Callable[[Array, Array], Array]:
@@ -126,32 +131,33 @@ def _greater(lattice: Lattice, start: int) -> Callable[[Array, Array], Array]:
     return allowed
 
 
+def _width(lattice: Lattice) -> int:
+    """Columns of the tables of a lattice: as many as arms leave or enter a site, or a few more."""
+    arms = max(*map(len, lattice.arms), *map(len, lattice.arms_in))
+    return next((width for width in WIDTHS if width >= arms), arms)
+
+
 def kernel_of(series: Series) -> tuple[str, tuple[int, ...]]:
     """Name and traits of the kernel that counts a series."""
-    lattice = series.lattice
-    arms, arms_in = (max(map(len, table)) for table in (lattice.arms, lattice.arms_in))
-    if series.rule.closed:
-        return "polygon", (arms,)
-    return "walk", (arms, arms_in, int(lattice.one_way))
+    width = _width(series.lattice)
+    return ("polygon", (width,)) if series.rule.closed else ("walk", (width, int(series.lattice.one_way)))
 
 
-def _kernel(series: Series, patch: Patch) -> Callable[..., bool]:
-    arms, arms_in = int(patch.next.shape[1]), int(patch.previous.shape[1])  # those of the lattice
-    table = np.zeros((1, arms), dtype=np.int32)
-    back = np.zeros((1, arms), dtype=patch.back.dtype)
-    into = np.zeros((1, arms_in), dtype=np.int32)
-    cube = np.ones((1, 1, arms), dtype=np.int32)
+def _kernel(series: Series) -> Callable[..., bool]:
+    name, traits = kernel_of(series)
+    table = np.zeros((1, traits[0]), dtype=np.int32)
+    back = np.zeros((1, traits[0]), dtype=np.uint8)
+    cube = np.ones((1, 1, traits[0]), dtype=np.int32)
     marks = np.full(1, -1, dtype=np.int32)
-    kind = np.zeros(1, dtype=patch.kind.dtype)
+    kind = np.zeros(1, dtype=np.int16)
     stack = Stack.of(8)
 
     def walk(run: Callable[..., bool]) -> None:
-        run(table, into, back, kind, cube, cube, marks, *stack.arrays(), 0)
+        run(table, table, back, kind, cube, cube, marks, *stack.arrays(), 0)
 
     def polygon(run: Callable[..., bool]) -> None:
         run(table, kind, cube, cube, marks, *stack.arrays(), 0)
 
-    name, traits = kernel_of(series)
     if series.rule.closed:
         return compiled.kernel("direct", name, kernels.polygon_kernel, traits, polygon)
     return compiled.kernel("direct", name, kernels.walk_kernel, traits, walk)

@@ -29,9 +29,10 @@ VISITED = 16384
 """Taken off `free[site]` while the site is visited, so that one look tells both; more than any coordination number."""
 
 
-def walk_kernel(arms: int, arms_in: int, one_way: bool) -> Callable[..., bool]:
+def walk_kernel(arms: int, one_way: bool) -> Callable[..., bool]:
     """Counts self-avoiding walks; returns whether the subtree above the floor is exhausted.
 
+    `nxt` and `prv` are int32 [sites + 1, arms], the sites that each leads to and comes from, zeros anywhere.
     `free[site]` is the number of free neighbours a site leads to. The prefix at depth TOP - 3 is the deepest that
     is marked: the walks of its last two steps are added up from `free` without visiting them. A neighbour x of
     a site w that is not marked yet still counts w among its free neighbours if x leads back to w, hence the `back`.
@@ -54,7 +55,7 @@ def walk_kernel(arms: int, arms_in: int, one_way: bool) -> Callable[..., bool]:
                     reg[NODES] += nodes
                     return True
                 free[here] += VISITED
-                for j in range(arms_in):
+                for j in range(arms):
                     free[prv[here, j]] += 1
                 depth -= 1
                 continue
@@ -73,7 +74,7 @@ def walk_kernel(arms: int, arms_in: int, one_way: bool) -> Callable[..., bool]:
             nodes += 1
             depth += 1
             sums[depth + 1] += factor * free[there]
-            for j in range(arms_in):
+            for j in range(arms):
                 free[prv[there, j]] -= 1
             free[there] -= VISITED
             if depth < last:
@@ -95,7 +96,7 @@ def walk_kernel(arms: int, arms_in: int, one_way: bool) -> Callable[..., bool]:
             sums[depth + 2] += factor * one
             sums[depth + 3] += factor * two
             free[there] += VISITED
-            for j in range(arms_in):
+            for j in range(arms):
                 free[prv[there, j]] += 1
             depth -= 1
         reg[DEPTH] = depth
