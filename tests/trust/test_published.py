@@ -105,7 +105,7 @@ def test_a_famous_name_alone_is_not_recognised(tmp_path: Path) -> None:
 def test_a_series_from_a_ledger_is_recognised() -> None:
     """A series read back from its canonical form, without names, has the same published values."""
     square = series("square", "polygon")
-    again = from_canonical(json.loads(square.text))
+    again = from_canonical(json.loads(square.text), {})
     assert [found.table.id for found in published.for_series(again)] == ["polygons-square"]
 
 
