@@ -4,12 +4,16 @@ from __future__ import annotations
 
 import math
 import time
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from fleetcount.cli import options
 from fleetcount.errors import InputError, StoppedError
+
+if TYPE_CHECKING:
+    from fleetcount.fleet.counting import Options
+    from fleetcount.series.table import CoefficientTable
 
 
 def register(app: typer.Typer) -> None:
@@ -42,36 +46,54 @@ def count(
 
     Walks are counted as directed from a fixed start; polygons per cell, without root or sense.
     """
-    from fleetcount.cli.screen import Screen, duration
-    from fleetcount.fleet.counting import Options, check, count_series
-    from fleetcount.ledger.access import open_store
+    from fleetcount.fleet.interrupt import Interrupts, StopFlag
 
     options.one_form(json=as_json, csv=as_csv, plain=plain)
     if cores is not None and not 1 <= cores <= 1024:
         raise InputError(f"{cores} cores", where="--cores", mend="give a number from 1 to 1024")
     if not 0.001 <= ledger_size <= 1e6:
         raise InputError(f"{ledger_size} GB", where="--ledger-size", mend="give a size from 0.001 to 1000000")
-    series = options.define(lattice, object_name, start)
     began = time.monotonic()
-    with Screen(quiet) as screen:
-        how = Options(
-            cores=cores, wait=math.inf if wait else 0.0, ledger_bytes=ledger_size * 1e9, observer=screen
-        )
-        check(series, to)
-        with open_store(ledger, create=True) as store:
-            for notice in store.notices:
-                screen.note(notice)
-            try:
-                table = count_series(store, series, to, how)
-            except StoppedError:
-                raise StoppedError(
-                    "stopped; what was counted is kept",
-                    where=store.location,
-                    mend="the same line goes on from there",
-                ) from None
-            location = store.location
+    stop = StopFlag()
+    try:
+        with Interrupts(stop):
+            from fleetcount.cli.screen import Screen, duration
+            from fleetcount.fleet.counting import Options
+
+            how = Options(
+                cores=cores, wait=math.inf if wait else 0.0, ledger_bytes=ledger_size * 1e9, stop=stop
+            )
+            with Screen(quiet) as screen:
+                how.observer = screen
+                table, location = _counted(lattice, object_name, start, to, ledger, how)
+    except KeyboardInterrupt:
+        raise _stopped() from None
     if per_site:
         table = table.per_site()
     options.give(table, json=as_json, csv=as_csv, plain=plain)
     if not quiet:
         options.say(f"{duration(time.monotonic() - began)}; every tally is in {location}")
+
+
+def _counted(
+    lattice: str, object_name: str, start: str | None, to: int, ledger: str | None, how: Options
+) -> tuple[CoefficientTable, str]:
+    """The table, and where its tallies are."""
+    from fleetcount.fleet.counting import check, count_series
+    from fleetcount.ledger.access import open_store
+
+    series = options.define(lattice, object_name, start)
+    check(series, to)
+    with open_store(ledger, create=True) as store:
+        for notice in store.notices:
+            how.observer.note(notice)
+        try:
+            return count_series(store, series, to, how), store.location
+        except StoppedError:
+            raise _stopped(store.location) from None
+
+
+def _stopped(where: str = "") -> StoppedError:
+    return StoppedError(
+        "stopped; what was counted is kept", where=where, mend="the same line goes on from there"
+    )

@@ -7,14 +7,15 @@ import uuid
 from collections import deque
 from collections.abc import Sequence
 
-from fleetcount.errors import StoppedError, TrustError
+from fleetcount.errors import FleetcountError, StoppedError, TrustError
 from fleetcount.fleet.core import MOST_UNITS, Bundle, Core, Pace, budget_for
 from fleetcount.fleet.crew import Crew
+from fleetcount.fleet.interrupt import StopFlag
 from fleetcount.fleet.planning import divide_roots
 from fleetcount.fleet.snapshot import Observer, Snapshot
-from fleetcount.fleet.work import HandBack, HandOut, StopFlag, Task
+from fleetcount.fleet.work import HandBack, HandOut, Task
 from fleetcount.ledger.states import State
-from fleetcount.ledger.store import RENEW_SECONDS, Lease, Store, Verdict
+from fleetcount.ledger.store import RENEW_SECONDS, Lease, Store, UnitRow, Verdict
 from fleetcount.methods.face import Forecast
 
 _TICK = 0.1
@@ -55,6 +56,7 @@ class Coordinator:
         Raises:
             StoppedError: the stop flag went up; what was counted has been accepted.
             TrustError: an answer contradicts its unit, or units are barred.
+            FleetError: those who count are out of reach, or cannot count at all.
         """
         self._look_again()
         try:
@@ -63,15 +65,13 @@ class Coordinator:
                 self._lease,
                 self._task,
                 self._forecast,
-                self._crew.slots(),
+                max(1, self._crew.slots()),
                 0.1,
-                self._keep_lease,
+                self._tick,
             )
             self._look_again()
             while self._waiting or self._core.out:
-                self._keep_lease()
-                if self._stop.up:
-                    raise StoppedError("stopped")
+                self._tick()
                 self._send()
                 self._receive(self._crew.collect(_TICK))
                 self._show()
@@ -91,7 +91,10 @@ class Coordinator:
             )
         self._store.finish_reading(self._lease, self._task.reading)
 
-    def _keep_lease(self) -> None:
+    def _tick(self) -> None:
+        """Heed the stop flag, keep the lease."""
+        if self._stop.up:
+            raise StoppedError("stopped")
         if time.monotonic() - self._renewed >= RENEW_SECONDS:
             self._lease = self._store.renew(self._lease)
             self._renewed = time.monotonic()
@@ -110,6 +113,8 @@ class Coordinator:
         if not room or not self._waiting:
             return
         waiting = self._store.waiting(self._task.reading, room * MOST_UNITS)
+        if not waiting:
+            self._look_again()
         tokens = [uuid.uuid4().hex for _ in range(room)]
         for bundle in self._core.deal(waiting, tokens, self._remaining, slots):
             units = self._store.hand_out(self._lease, self._task.reading, bundle.keys, bundle.token)
@@ -123,6 +128,8 @@ class Coordinator:
         for token, what in arrived:
             if isinstance(what, HandBack):
                 self._take_back(what)
+            elif isinstance(what, FleetcountError):
+                raise what
             else:
                 self._take_lost(token, what)
 
@@ -130,26 +137,27 @@ class Coordinator:
         bundle = self._core.back(back.token, back.nodes, back.seconds)
         if bundle is None:
             return
-        expected = {unit.key: unit.expected for unit in bundle.units}
         verdicts = self._store.accept(self._lease, back.answers)
         refused = [a for a, v in zip(back.answers, verdicts, strict=True) if v is Verdict.REFUSED]
         if refused:
             raise TrustError(
                 "an answer contradicts the unit it was asked for", where=f"machine {back.machine}"
             )
-        kept = set(expected) - set(back.untouched) - {key for key, _ in back.failed}
-        self._settled += len(kept)
-        for answer, verdict in zip(back.answers, verdicts, strict=True):
-            if verdict is Verdict.ACCEPTED:
-                self._units += len(answer.expected)
-                self._waiting += len(answer.expected)
-                self._remaining += sum(answer.expected)
-        self._remaining = max(0.0, self._remaining - sum(expected[key] for key in kept))
-        self._nodes, self._seconds = self._nodes + back.nodes, self._seconds + back.seconds
-        self._recent.append((time.monotonic(), back.nodes))
-        self._hand_back(back.token, back.untouched)
+        accepted = [a for a, v in zip(back.answers, verdicts, strict=True) if v is Verdict.ACCEPTED]
+        unsettled = {key for key, _ in back.failed}
         for key, error in back.failed:
             self._hand_back(back.token, [key], error, back.machine)
+        if len(accepted) + len(unsettled) < len(bundle.units):  # whatever else is still out waits again
+            unsettled |= {row.key for row in self._hand_back(back.token, bundle.keys)}
+        for answer in accepted:
+            self._units += len(answer.expected)
+            self._waiting += len(answer.expected)
+            self._remaining += sum(answer.expected)
+        kept = [unit.expected for unit in bundle.units if unit.key not in unsettled]
+        self._settled += len(kept)
+        self._remaining = max(0.0, self._remaining - sum(kept))
+        self._nodes, self._seconds = self._nodes + back.nodes, self._seconds + back.seconds
+        self._recent.append((time.monotonic(), back.nodes))
 
     def _take_lost(self, token: str, error: Exception) -> None:
         again, failed = self._core.lost(token)
@@ -164,16 +172,18 @@ class Coordinator:
 
     def _hand_back(
         self, token: str, keys: Sequence[str], failed: str | None = None, machine: str = ""
-    ) -> None:
-        if keys:
-            rows = self._store.hand_back(self._lease, self._task.reading, keys, token, failed, machine)
-            self._waiting += sum(row.state is State.WAITING for row in rows)
+    ) -> list[UnitRow]:
+        if not keys:
+            return []
+        rows = self._store.hand_back(self._lease, self._task.reading, keys, token, failed, machine)
+        self._waiting += sum(row.state is State.WAITING for row in rows)
+        return rows
 
     def _wind_up(self) -> None:
         """Stop the kernels, take what they have, put the rest back; whatever goes wrong here is left to the lease."""
-        self._crew.stop()
         deadline = time.monotonic() + _PATIENCE
         try:
+            self._crew.stop()
             while self._core.out and time.monotonic() < deadline:
                 self._receive(self._crew.collect(_TICK))
             for token, bundle in list(self._core.out.items()):

@@ -6,7 +6,7 @@ nothing of a unit that waits, but how often a process died while it was out.
 
 from __future__ import annotations
 
-from collections import Counter
+from collections import Counter, deque
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 
@@ -25,7 +25,7 @@ BYTES_A_TALLY = 2_500
 """Stored size of a tally with its units, roughly; and a bundle leaves about so many tallies: """
 TALLIES_A_BUNDLE = 20
 
-DEATHS_TO_GO_ALONE = 2
+DEATHS_TO_SUSPECT = 2
 DEATHS_TO_FAIL = 8
 
 
@@ -94,26 +94,31 @@ class Core:
     ) -> list[Bundle]:
         """Bundles for the free cores out of the units that wait, the largest first.
 
-        A unit that processes died over goes alone. The bundles are not out before `sent`.
+        Of the units that processes died over only one is out at a time, in a short bundle of its own: whatever
+        kills processes is then blamed alone in the end. The bundles are not out before `sent`.
         """
         seconds, bundles = self.seconds(remaining, slots), []
-        queue = list(waiting)
+        enough = seconds * self.pace.rate / self.pace.drift
+        suspects = [unit for unit in waiting if self.suspect(unit.key)][:1]
+        if any(self.suspect(key) for bundle in self.out.values() for key in bundle.keys):
+            suspects = []
+        queue = deque(unit for unit in waiting if not self.suspect(unit.key))
         for token in tokens:
+            if suspects:
+                bundles.append(Bundle(token, (suspects.pop(),), LEAST_SECONDS))
+                continue
             nodes, units = 0.0, list[UnitRow]()
-            enough = seconds * self.pace.rate / self.pace.drift
             while queue and nodes < enough and len(units) < MOST_UNITS:
-                alone = self.deaths[queue[0].key] >= DEATHS_TO_GO_ALONE
-                if alone and units:
-                    break
-                unit = queue.pop(0)
-                units.append(unit)
-                nodes += unit.expected
-                if alone:
-                    break
+                units.append(queue.popleft())
+                nodes += units[-1].expected
             if not units:
                 break
             bundles.append(Bundle(token, tuple(units), seconds))
         return bundles
+
+    def suspect(self, key: str) -> bool:
+        """Whether processes have died over this unit."""
+        return self.deaths[key] >= DEATHS_TO_SUSPECT
 
     def sent(self, bundle: Bundle) -> None:
         """A bundle is on its way."""

@@ -10,14 +10,14 @@ from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from fleetcount import host
-from fleetcount.errors import SeriesError
+from fleetcount.errors import SeriesError, StoppedError
 from fleetcount.fleet.coordinator import LEDGER_BYTES, Coordinator
 from fleetcount.fleet.crew import Crew, OwnProcess
-from fleetcount.fleet.interrupt import raising
+from fleetcount.fleet.interrupt import Interrupts, StopFlag
 from fleetcount.fleet.local import LocalFleet
 from fleetcount.fleet.planning import open_reading
 from fleetcount.fleet.snapshot import Nobody, Observer
-from fleetcount.fleet.work import StopFlag, Task
+from fleetcount.fleet.work import Task
 from fleetcount.ledger import tables
 from fleetcount.ledger.leasing import this_process
 from fleetcount.ledger.store import Lease, Machine, Store
@@ -69,9 +69,13 @@ def count_series(store: Store, series: Series, top: int, options: Options) -> Co
     """
     check(series, top)
     method = registry.get(METHOD)
-    if not _covered(store, series, top):
-        _count(store, series, top, method, options)
-    return tables.view(store, series).table.cut(top)
+    with Interrupts(options.stop) as interrupts:
+        try:
+            if not _covered(store, series, top):
+                _count(store, series, top, method, options, interrupts)
+            return tables.view(store, series).table.cut(top)
+        except KeyboardInterrupt:
+            raise StoppedError("stopped") from None
 
 
 def check(series: Series, top: int) -> None:
@@ -89,7 +93,9 @@ def _covered(store: Store, series: Series, top: int) -> bool:
     return any(tables.reach(row) >= top for row in tables.finished(store, series.digest))
 
 
-def _count(store: Store, series: Series, top: int, method: Method, options: Options) -> None:
+def _count(
+    store: Store, series: Series, top: int, method: Method, options: Options, interrupts: Interrupts
+) -> None:
     observer = options.observer
     if not method.is_warm(series):
         observer.stage("compiling kernels for this machine, the first time only")
@@ -99,14 +105,14 @@ def _count(store: Store, series: Series, top: int, method: Method, options: Opti
     store.open_series(series.digest, series.text, written, time.time_ns() // 1000)
     with _lease(store, series, options.wait) as lease:
         _note_machine(store, series)
-        count = _Count(store, lease, series, method, options)
+        count = _Count(store, lease, series, method, options, interrupts)
         if forecast.seconds <= OWN_PROCESS_SECONDS:
             count.reading(top, OwnProcess(options.stop))
         elif options.client is not None:
             from fleetcount.fleet.dask_crew import on_client
 
             count.short_reading(forecast.shares, forecast.seconds)
-            count.reading(top, on_client(options.client))
+            count.reading(top, on_client(options.client, options.stop))
         else:
             with LocalFleet(options.cores or host.cores()) as fleet:
                 fleet.launch(series, method.name, top)
@@ -122,6 +128,7 @@ class _Count:
     series: Series
     method: Method
     options: Options
+    interrupts: Interrupts
 
     def short_reading(self, shares: tuple[float, ...], seconds: float) -> None:
         """The lengths that a second reaches: the first terms at once, and a check of the long reading."""
@@ -135,7 +142,7 @@ class _Count:
     def reading(self, top: int, crew: Crew) -> None:
         """Go on with the open reading of that reach, or open one, and count it to its end."""
         forecast = self.method.forecast(self.series, range(top + 1))
-        with raising(self.options.stop):
+        with self.interrupts.patient():
             task = self._open_one(top) or open_reading(
                 self.store, self.lease, self.series, self.method.name, top
             )

@@ -6,7 +6,8 @@ import time
 from collections import deque
 from typing import Protocol
 
-from fleetcount.fleet.work import HandBack, HandOut, StopFlag, count_bundle
+from fleetcount.fleet.interrupt import StopFlag
+from fleetcount.fleet.work import HandBack, HandOut, count_bundle
 
 
 class Crew(Protocol):

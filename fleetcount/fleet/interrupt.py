@@ -1,4 +1,10 @@
-"""Ctrl-C and SIGTERM while units are counted: the first raises the stop flag, a second one is not waited for."""
+"""Ctrl-C, SIGTERM and SIGHUP while a series is counted.
+
+The first signal raises the stop flag. While units are counted that is enough: the coordinator sees it within a slice
+and hands everything back. Everywhere else (imports, compiling, starting processes, reading the ledger) nobody looks
+at the flag, so there the signal interrupts at once. A second one is never waited for. A signal that this process was
+started to ignore, as `nohup` does, stays ignored.
+"""
 
 from __future__ import annotations
 
@@ -7,26 +13,50 @@ import signal
 import threading
 from collections.abc import Iterator
 from types import FrameType
+from typing import Any
 
-from fleetcount.fleet.work import StopFlag
+SIGNALS = ("SIGINT", "SIGTERM", "SIGHUP")
 
 
-@contextlib.contextmanager
-def raising(stop: StopFlag) -> Iterator[None]:
-    """Within the block the signals raise the flag instead of interrupting; only a main thread can do that."""
-    if threading.current_thread() is not threading.main_thread():
-        yield
-        return
+class StopFlag:
+    """A plain attribute that kernels' callers look at after each slice."""
 
-    def handler(number: int, frame: FrameType | None) -> None:
-        if stop.up:
+    def __init__(self) -> None:
+        self.up = False
+
+
+class Interrupts:
+    """Context manager in which the signals raise a stop flag; only a main thread can do that."""
+
+    def __init__(self, stop: StopFlag) -> None:
+        self._stop = stop
+        self._patient = False
+        self._old: dict[signal.Signals, Any] = {}
+
+    def __enter__(self) -> Interrupts:
+        if threading.current_thread() is threading.main_thread():
+            known = [signal.Signals[name] for name in SIGNALS if hasattr(signal, name)]
+            self._old = {number: signal.getsignal(number) for number in known}
+            for number, before in self._old.items():
+                if before is not signal.SIG_IGN:
+                    signal.signal(number, self._handle)
+        return self
+
+    def __exit__(self, *exc: object) -> None:
+        for number, before in self._old.items():
+            if before is not signal.SIG_IGN:
+                signal.signal(number, signal.SIG_DFL if before is None else before)
+
+    @contextlib.contextmanager
+    def patient(self) -> Iterator[None]:
+        """Within the block somebody looks at the flag: a first signal raises it and nothing else."""
+        self._patient = True
+        try:
+            yield
+        finally:
+            self._patient = False
+
+    def _handle(self, number: int, frame: FrameType | None) -> None:
+        again, self._stop.up = self._stop.up, True
+        if again or not self._patient:
             raise KeyboardInterrupt
-        stop.up = True
-
-    names = [name for name in ("SIGINT", "SIGTERM", "SIGHUP") if hasattr(signal, name)]
-    old = {name: signal.signal(getattr(signal, name), handler) for name in names}
-    try:
-        yield
-    finally:
-        for name, before in old.items():
-            signal.signal(getattr(signal, name), before)

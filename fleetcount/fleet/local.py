@@ -20,7 +20,7 @@ from typing import TYPE_CHECKING, Any
 
 from fleetcount.errors import FleetError
 from fleetcount.fleet.dask_crew import DaskCrew, running_threads
-from fleetcount.fleet.work import StopFlag
+from fleetcount.fleet.interrupt import StopFlag
 from fleetcount.host import machine_name
 from fleetcount.series.definition import Series
 
@@ -68,18 +68,19 @@ class LocalFleet:
         import dask
         from distributed import Client, LocalCluster
 
-        logging.getLogger("distributed").setLevel(logging.CRITICAL)
-        dask.config.set(
-            {"distributed.scheduler.work-stealing": False, "distributed.scheduler.allowed-failures": 0}
-        )
-        cluster = LocalCluster(
-            n_workers=0,
-            processes=False,
-            protocol="tcp://",
-            host="127.0.0.1",
-            dashboard_address="127.0.0.1:0",
-            silence_logs=logging.CRITICAL,
-        )
+        logger = logging.getLogger("distributed")
+        self._resources.callback(logger.setLevel, logger.level)
+        logger.setLevel(logging.CRITICAL)
+        ours = {"distributed.scheduler.work-stealing": False, "distributed.scheduler.allowed-failures": 0}
+        with dask.config.set(ours):
+            cluster = LocalCluster(
+                n_workers=0,
+                processes=False,
+                protocol="tcp://",
+                host="127.0.0.1",
+                dashboard_address="127.0.0.1:0",
+                silence_logs=logging.CRITICAL,
+            )
         self._resources.callback(cluster.close, timeout=1)
         self._client = self._resources.enter_context(Client(cluster))
         self._address = json.dumps(cluster.scheduler_address).encode() + b"\n"

@@ -12,6 +12,7 @@ from dataclasses import dataclass, field
 from functools import partial
 
 from fleetcount.errors import FleetcountError
+from fleetcount.fleet.interrupt import StopFlag
 from fleetcount.host import machine_name
 from fleetcount.ledger.record import TallyRecord, checksum
 from fleetcount.ledger.store import Answer
@@ -98,21 +99,34 @@ class HandBack:
         return cls(**{**fields, "nodes": int(fields["nodes"]), "answers": answers, "failed": failed})
 
 
-class StopFlag:
-    """A plain attribute that kernels' callers look at after each slice."""
-
-    def __init__(self) -> None:
-        self.up = False
-
-
 STOP = StopFlag()
 """The flag of this process: once up, every bundle here is handed back after the running slice."""
+
+STOPPED: set[str] = set()
+"""Runs whose bundles are handed back here: a process of a shared cluster outlives each of them."""
+
+
+class RunFlag:
+    """The flag of one run in this process."""
+
+    def __init__(self, run: str) -> None:
+        self._run = run
+
+    @property
+    def up(self) -> bool:
+        """Whether this process or this run is to stop."""
+        return STOP.up or self._run in STOPPED
+
+
+def stop_run(run: str) -> None:
+    """Hand back all bundles that this process has of a run, now and later; what a machine is told."""
+    STOPPED.add(run)
 
 
 class BundleClock:
     """A clock for one bundle: `seconds` from now, or the stop flag."""
 
-    def __init__(self, seconds: float, stop: StopFlag) -> None:
+    def __init__(self, seconds: float, stop: StopFlag | RunFlag) -> None:
         self.deadline = time.monotonic() + seconds
         self.stop = stop
 
@@ -122,12 +136,12 @@ class BundleClock:
         return Word.TIME_UP if time.monotonic() >= self.deadline else Word.GO
 
 
-def work(sent: bytes) -> bytes:
-    """Count a bundle that came over the wire; what a machine runs."""
-    return count_bundle(HandOut.unpack(sent), STOP).pack()
+def work(sent: bytes, run: str) -> bytes:
+    """Count a bundle of a run that came over the wire; what a machine runs."""
+    return count_bundle(HandOut.unpack(sent), RunFlag(run)).pack()
 
 
-def count_bundle(hand_out: HandOut, stop: StopFlag) -> HandBack:
+def count_bundle(hand_out: HandOut, stop: StopFlag | RunFlag) -> HandBack:
     """Count the units of a bundle one after another until the time is up."""
     began = time.monotonic()
     task, clock = hand_out.task, BundleClock(hand_out.seconds, stop)
