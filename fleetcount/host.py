@@ -104,7 +104,7 @@ def is_gone(pid: int, started: int) -> bool:
         return now != started
     try:
         return not psutil.pid_exists(pid) or psutil.Process(pid).status() == psutil.STATUS_ZOMBIE
-    except psutil.NoSuchProcess:
+    except (psutil.NoSuchProcess, OverflowError, ValueError):
         return True
     except psutil.Error:
         return False

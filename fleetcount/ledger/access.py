@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import stat
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -79,6 +80,8 @@ def _connect(place: Place, create: bool, read_only: bool) -> Database:
     if place.path is None:
         return engine.server(place, read_only)
     _check_file(place.path, create)
+    if not read_only:
+        _check_writable(place.path)
     return engine.file(place, read_only, create)
 
 
@@ -112,6 +115,19 @@ def _check_file(path: Path, create: bool) -> None:
         raise LedgerError("it is empty: nothing has been counted into it yet", where=where)
     if begin and begin != _MAGIC:
         raise LedgerError("not a ledger: no SQLite database", where=where, mend="name another file")
+
+
+def _check_writable(path: Path) -> None:
+    """SQLite also writes files beside the ledger, and would tell of a read-only folder in words of its own."""
+    what = path if path.exists() else path.absolute().parent
+    for part in (what, path.absolute().parent):
+        if not os.access(part, os.W_OK):
+            kind = "its folder" if part.is_dir() else "it"
+            raise LedgerError(
+                f"{kind} cannot be written",
+                where=str(path),
+                mend="check permissions, or name another --ledger",
+            )
 
 
 _MAGIC = b"SQLite format 3\0"

@@ -237,7 +237,7 @@ def _string(value: object) -> str:
 
 
 def _small(value: object) -> int:
-    if not isinstance(value, int) or value < 0:
+    if not isinstance(value, int) or isinstance(value, bool) or value < 0:
         raise TypeError(f"{value!r} is no whole number")
     return value
 

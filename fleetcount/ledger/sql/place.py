@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 import re
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from urllib.parse import unquote
 
@@ -77,4 +77,10 @@ def _server(url: str) -> Place:
         secrets |= {found.group(2), unquote(found.group(2))}
     shown = _IN_QUERY.sub(r"\1***", _IN_URL.sub(r"\1:***@", url))
     longest_first = tuple(sorted(secrets - {""}, key=lambda secret: -len(secret)))
-    return Place(shown, url=url, secrets=longest_first)
+    place = Place(shown, url=url, secrets=longest_first)
+    place = replace(place, shown=place.mask(shown))
+    if re.split(r"[/?#]", url.partition("://")[2])[0].count("@") > 1:
+        raise LedgerError(
+            "the address holds two @", where=place.shown, mend="write an @ in a password as %40"
+        )
+    return place
