@@ -7,9 +7,8 @@ from __future__ import annotations
 
 import math
 import time
+from collections.abc import Mapping
 from dataclasses import dataclass
-
-from fleetcount.methods.direct.keys import Prefix
 
 KERNEL_SECONDS = 0.04
 """A trial that spent so long in kernels tells the rate well enough."""
@@ -20,52 +19,60 @@ ALL_SECONDS = 1.0
 _MOST = 600.0
 """Greatest logarithm of an extrapolation: beyond it everything is equally hopeless."""
 
+PERIOD = 4
+"""Growth is measured over so many steps: on some lattices polygons have even lengths only, or multiples of four."""
+
 
 @dataclass(frozen=True)
 class Calibration:
     """Nodes visited for each reach that was tried, and how they grow.
 
     Attributes:
-        reaches, nodes: reach and nodes of the whole count up to it, symmetry used.
+        first: the least reach that was tried; the others follow without a gap.
+        nodes: nodes of the whole count up to each reach, symmetry used; they never decrease.
+        parts: for each start site its part of the nodes at the greatest reach.
         growth: factor by which the nodes grow with each further step.
         rate: nodes a second of core time on this machine.
     """
 
-    reaches: tuple[int, ...]
+    first: int
     nodes: tuple[float, ...]
+    parts: Mapping[int, float]
     growth: float
     rate: float
 
+    @property
+    def reach(self) -> int:
+        """The greatest reach that was tried."""
+        return self.first + len(self.nodes) - 1
+
     def total(self, reach: int) -> float:
-        """Nodes expected for the whole count up to a reach."""
-        if reach in self.reaches:
-            return self.nodes[self.reaches.index(reach)]
-        last = (
-            -1 if (reach - self.reaches[-1]) % 2 == 0 or len(self.reaches) < 2 else -2
-        )  # parity: see polygons
-        steps = min(reach - self.reaches[last], _MOST / math.log(self.growth))
-        return float(max(1.0, self.nodes[last] * self.growth**steps))
-
-
-def below(calibration: Calibration, top: int, prefix: Prefix, order: int, whole_order: int) -> float:
-    """Nodes expected below one prefix, whose symmetries have order `order`, of `whole_order` at the start."""
-    depth = len(prefix.arms)
-    share = whole_order / order / calibration.growth**depth
-    return max(1.0, calibration.total(top) * min(1.0, share))
+        """Nodes expected for the whole count up to a reach; a longer reach never needs fewer."""
+        if reach < self.first:
+            return 1.0
+        if reach <= self.reach:
+            return self.nodes[reach - self.first]
+        period = min(PERIOD, len(self.nodes))
+        last = (self.reach - reach) % period
+        steps = min(reach - self.reach + last, 10**9)
+        return math.exp(min(_MOST, math.log(self.nodes[-1 - last]) + steps * math.log(self.growth)))
 
 
 class Calibrator:
     """Collects the trial counts; `enough` tells when the last one took long enough to judge the rate."""
 
-    def __init__(self) -> None:
-        self.reaches: list[int] = []
+    def __init__(self, first: int) -> None:
+        self.first = first
         self.nodes: list[float] = []
+        self.parts: dict[int, float] = {}
         self.seconds: list[float] = []
         self._began = time.thread_time()
 
-    def add(self, reach: int, nodes: int, seconds: float) -> None:
-        self.reaches.append(reach)
-        self.nodes.append(float(max(nodes, 1)))
+    def add(self, nodes: Mapping[int, int], seconds: float) -> None:
+        """Take in the nodes of the next reach, by start site."""
+        total = float(max(sum(nodes.values()), 1, *self.nodes[-1:]))
+        self.nodes.append(total)
+        self.parts = {start: max(number, 1) / total for start, number in nodes.items()}
         self.seconds.append(seconds)
 
     def enough(self) -> bool:
@@ -73,9 +80,9 @@ class Calibrator:
         return spent > ALL_SECONDS or (bool(self.seconds) and self.seconds[-1] > KERNEL_SECONDS)
 
     def result(self) -> Calibration:
-        """Growth from the last terms, two apart where parity makes single steps jump."""
-        nodes, seconds = self.nodes, self.seconds
-        back = min(4, len(nodes) - 1)
+        """Growth from terms some steps apart, because single steps may jump."""
+        nodes = self.nodes
+        back = min(PERIOD, len(nodes) - 1)
         growth = (nodes[-1] / nodes[-1 - back]) ** (1 / back) if back else 2.0
-        rate = sum(nodes[-3:]) / max(sum(seconds[-3:]), 1e-6)
-        return Calibration(tuple(self.reaches), tuple(nodes), max(growth, 1.01), max(rate, 1e5))
+        rate = sum(nodes[-3:]) / max(sum(self.seconds[-3:]), 1e-6)
+        return Calibration(self.first, tuple(nodes), self.parts, max(growth, 1.01), max(rate, 1e5))

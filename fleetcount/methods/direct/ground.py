@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import threading
-from collections.abc import Callable, Iterable
-from dataclasses import dataclass
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass, field
 from functools import lru_cache
 from math import lcm
 from typing import Any
@@ -16,7 +16,7 @@ from fleetcount.lattice.model import Lattice
 from fleetcount.lattice.patch import Patch, build, check_fits, distance_to
 from fleetcount.methods import compiled
 from fleetcount.methods.direct import kernels
-from fleetcount.methods.direct.symmetry_states import SymmetryStates, symmetry_states, without_symmetry
+from fleetcount.methods.direct.symmetry_states import SymmetryStates, states_of
 from fleetcount.series.definition import Series
 
 Array = np.ndarray[Any, np.dtype[Any]]
@@ -45,6 +45,7 @@ class Ground:
     images: Array
     onward: Array
     run: Callable[..., bool]
+    _homes: dict[int, Array] = field(default_factory=dict)
 
     @property
     def arms(self) -> int:
@@ -56,16 +57,30 @@ class Ground:
         Rooted at the least site of an undirected lattice each polygon is run through in one sense only: it comes
         home by a greater arm than it left by.
         """
-        patch = self.patch
-        if self.series.lattice.one_way:
-            closers = {int(x) for x in patch.previous[START]} - {0}
-        else:
-            closers = {
-                int(patch.next[START, k]) for k in range(self.arms) if not self.least or k > first_arm
-            } - {0}
-        home = distance_to(patch, sorted(closers)) + 1
-        home[0] = kernels.VISITED
-        return np.minimum(home, kernels.VISITED).astype(np.int32)
+        one_sense = self.least and not self.series.lattice.one_way
+        above = first_arm if one_sense else -1
+        if above not in self._homes:
+            patch = self.patch
+            entries = patch.previous[START] if self.series.lattice.one_way else patch.next[START, above + 1 :]
+            home = distance_to(patch, [int(x) for x in entries]) + 1
+            home[0] = kernels.VISITED
+            self._homes[above] = np.minimum(home, kernels.VISITED).astype(np.int32)
+        return self._homes[above]
+
+    def returning(self, arms: Sequence[int]) -> list[list[int]]:
+        """Before each step of a polygon's prefix and after its last: the arms from which it can still come home."""
+        here, seen, found = START, {START}, []
+        for depth in range(len(arms) + 1):
+            ways = []
+            for arm, there in enumerate(self.patch.next[here].tolist()):
+                home = self.home(arms[0] if depth else arm)
+                if there and there not in seen and depth + 1 + int(home[there]) <= self.top:
+                    ways.append(arm)
+            found.append(ways)
+            if depth < len(arms):
+                here = int(self.patch.next[here, arms[depth]])
+                seen.add(here)
+        return found
 
 
 def ground(series: Series, start: int, least: bool, top: int) -> Ground:
@@ -81,19 +96,21 @@ def patch_of(series: Series, start: int, least: bool, top: int) -> Patch:
     further from its root than half its length.
     """
     allowed = _greater(series.lattice, start) if least else None
-    return build(series.lattice, start, _radius(series, top), allowed, width=_width(series.lattice))
+    return build(series.lattice, start, _radius(series, top), allowed, width=width(series.lattice))
 
 
 def check_reach(series: Series, starts: Iterable[int], top: int) -> None:
-    """Raise InputError if the kernels' marks or this machine's memory do not allow that length."""
+    """Raise InputError if this machine's memory or the kernels' marks do not allow that length."""
+    if top < 0:
+        raise SeriesError(f"length {top} is negative", where=series.title(), mend="lengths begin at 0")
+    for start in starts:
+        check_fits(series.lattice, start, _radius(series, top), width=width(series.lattice))
     if top > kernels.VISITED // 2:
         raise SeriesError(
             f"length {top} is beyond what the direct method can mark",
             where=series.title(),
             mend=f"ask for at most {kernels.VISITED // 2}",
         )
-    for start in starts:
-        check_fits(series.lattice, start, _radius(series, top), width=_width(series.lattice))
 
 
 def _radius(series: Series, top: int) -> int:
@@ -106,9 +123,8 @@ def _radius(series: Series, top: int) -> int:
 def _ground(series: Series, start: int, least: bool, top: int) -> Ground:
     lattice = series.lattice
     patch = patch_of(series, start, least, top)
-    # No symmetry but the identity keeps a total order of the sites that translations keep.
-    states = without_symmetry(lattice) if least else symmetry_states(lattice, start)
-    shape = (len(states.orders), len(lattice.sites), _width(lattice))
+    states = states_of(lattice, start, least)
+    shape = (len(states.orders), len(lattice.sites), width(lattice))
     images, onward = np.ones(shape, dtype=np.int32), np.zeros(shape, dtype=np.int32)
     for table, known in ((images, states.images), (onward, states.onward)):
         table[:, :, : len(known[0][0])] = known
@@ -131,16 +147,16 @@ def _greater(lattice: Lattice, start: int) -> Callable[[Array, Array], Array]:
     return allowed
 
 
-def _width(lattice: Lattice) -> int:
+def width(lattice: Lattice) -> int:
     """Columns of the tables of a lattice: as many as arms leave or enter a site, or a few more."""
     arms = max(*map(len, lattice.arms), *map(len, lattice.arms_in))
-    return next((width for width in WIDTHS if width >= arms), arms)
+    return next((columns for columns in WIDTHS if columns >= arms), arms)
 
 
 def kernel_of(series: Series) -> tuple[str, tuple[int, ...]]:
     """Name and traits of the kernel that counts a series."""
-    width = _width(series.lattice)
-    return ("polygon", (width,)) if series.rule.closed else ("walk", (width, int(series.lattice.one_way)))
+    columns, lattice = width(series.lattice), series.lattice
+    return ("polygon", (columns,)) if series.rule.closed else ("walk", (columns, int(lattice.one_way)))
 
 
 def _kernel(series: Series) -> Callable[..., bool]:

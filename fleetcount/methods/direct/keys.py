@@ -31,9 +31,11 @@ class Prefix(NamedTuple):
 
 
 def parse(key: str) -> Prefix:
-    """The prefix of a key."""
+    """The prefix of a key; a prefix has one key only, so zeros in front are refused."""
     match = _FORM.fullmatch(key)
-    if match is None:
-        raise InputError("not the key of a direct unit", where=repr(key), mend="a key looks like 0:0.3.1")
-    start, least, arms = match.groups()
-    return Prefix(int(start), least is not None, tuple(map(int, arms.split("."))) if arms else ())
+    if match is not None:
+        start, least, arms = match.groups()
+        prefix = Prefix(int(start), least is not None, tuple(map(int, arms.split("."))) if arms else ())
+        if prefix.key() == key:
+            return prefix
+    raise InputError("not the key of a direct unit", where=repr(key[:80]), mend="a key looks like 0:0.3.1")

@@ -8,12 +8,12 @@ from functools import lru_cache
 from itertools import count as counting
 from typing import TYPE_CHECKING
 
-from fleetcount.errors import TrustError
-from fleetcount.lattice.symmetry import site_orbits
-from fleetcount.methods.direct import calibration, keys, twin
+from fleetcount.errors import InputError, TrustError
+from fleetcount.lattice.symmetry import site_orbits, stabilizer
+from fleetcount.methods.direct import keys, twin
 from fleetcount.methods.direct.calibration import Calibration, Calibrator
-from fleetcount.methods.direct.pieces import Piece, children, state_after, taken_out
-from fleetcount.methods.direct.symmetry_states import SymmetryStates, symmetry_states, without_symmetry
+from fleetcount.methods.direct.pieces import Piece, children, share, state_after, taken_out
+from fleetcount.methods.direct.symmetry_states import SymmetryStates, states_of
 from fleetcount.methods.face import Child, Clock, Counted, Forecast, Word
 from fleetcount.series.definition import Series
 from fleetcount.series.tally import Tally
@@ -23,6 +23,9 @@ if TYPE_CHECKING:
 
 CLIMB_SHARE = 0.1
 """When time is up, at most this share of the time used is spent on finishing the deepest open subtrees."""
+
+_FIRST_TRIAL = 4
+"""The least reach that the kernels can count."""
 
 _calibrating = threading.Lock()
 
@@ -46,9 +49,12 @@ class DirectMethod:
 
     def check_reach(self, series: Series, top: int) -> None:
         """See `Method.check_reach`; nothing is built."""
-        from fleetcount.methods.direct import ground  # compiled code is imported late
+        from fleetcount.methods.direct import ground, search  # compiled code is imported late
 
         ground.check_reach(series, self._starts(series), top)
+        for start in self._starts(series):
+            order = len(stabilizer(series.lattice, start))
+            search.check_bound(series.lattice.name, ground.width(series.lattice), order)
 
     def is_warm(self, series: Series) -> bool:
         """See `Method.is_warm`."""
@@ -69,16 +75,18 @@ class DirectMethod:
         top = max(lengths)
         least = self._rooted_at_least(series, top)
         starts = dict.fromkeys(range(len(series.lattice.sites)), 1) if least else self._starts(series)
-        each = _calibrate(series, least).total(top) / len(starts)
+        known = _calibrate(series, least)
         return tuple(
-            Child(keys.Prefix(s, least, ()).key(), weight, each) for s, weight in sorted(starts.items())
+            Child(keys.Prefix(s, least, ()).key(), weight, max(1.0, known.total(top) * known.parts[s]))
+            for s, weight in sorted(starts.items())
         )
 
     def divide(self, series: Series, lengths: Sequence[int], key: str) -> Counted:
         """The prefix itself is explored, its extensions are the children."""
-        prefix, top = keys.parse(key), max(lengths)
+        top = max(lengths)
+        prefix, states = self._understood(series, key, top)
         depth, explored = len(prefix.arms), _passed(series, prefix, top)
-        pieces = list(children(series, self._states(series, prefix), prefix)) if depth < top else []
+        pieces = list(children(series, states, prefix, top)) if depth < top else []
         return Counted(explored, self._as_children(series, top, pieces), 1, 0.0)
 
     def count(
@@ -88,11 +96,11 @@ class DirectMethod:
         from fleetcount.methods.direct.ground import ground  # compiled code is imported late
         from fleetcount.methods.direct.search import Search
 
-        prefix, top = keys.parse(key), max(lengths)
-        states = self._states(series, prefix)
-        whole, passed = taken_out(series, states, prefix, [keys.parse(k) for k in without])
+        top = max(lengths)
+        prefix, states = self._understood(series, key, top)
+        whole, passed = taken_out(series, states, prefix, top, [keys.parse(k) for k in without])
         if not prefix.arms and prefix.least and not without:
-            passed, whole = [Piece(prefix, 1)], list(children(series, states, prefix))
+            passed, whole = [Piece(prefix, 1)], list(children(series, states, prefix, top))
         explored, nodes, seconds = Tally(), len(passed), 0.0
         for piece in passed:
             explored.add(_passed(series, piece.prefix, top), piece.factor)
@@ -137,7 +145,7 @@ class DirectMethod:
         top = max(lengths)
         known = _calibrate(series, self._rooted_at_least(series, top))
         shares = tuple(known.total(n) for n in range(top + 1))
-        return Forecast(shares[-1], shares[-1] / known.rate, 1.5 + 0.02 * (top - known.reaches[-1]), shares)
+        return Forecast(shares[-1], shares[-1] / known.rate, 1.5 + 0.02 * max(0, top - known.reach), shares)
 
     def _starts(self, series: Series) -> dict[int, int]:
         if series.start is not None:
@@ -150,8 +158,18 @@ class DirectMethod:
             return False
         return _calibrate(series, True).total(top) <= _calibrate(series, False).total(top)
 
-    def _states(self, series: Series, prefix: keys.Prefix) -> SymmetryStates:
-        return _states(series, prefix.start, prefix.least)
+    def _understood(self, series: Series, key: str, top: int) -> tuple[keys.Prefix, SymmetryStates]:
+        """The prefix that a key names on this lattice, up to this length, and the symmetry states of its start."""
+        prefix = keys.parse(key)
+        known = prefix.start < len(series.lattice.sites) and (series.rule.closed or not prefix.least)
+        path = twin.sites_along(series.lattice, prefix) if known else None
+        if path is None or len(prefix.arms) > top:
+            raise InputError(f"no unit of {series.title()} up to length {top}", where=key)
+        if not twin.allowed(series.lattice, prefix, path):
+            raise InputError("a prefix that the object cannot begin with", where=key)
+        states = states_of(series.lattice, prefix.start, prefix.least)
+        state_after(series, states, prefix)  # raises InputError where another prefix stands for this one
+        return prefix, states
 
     def _tally(self, series: Series, search: Search, least: bool) -> Tally:
         """A search's sums as a tally; a polygon found once, at its least site, counts for all its closed walks."""
@@ -165,12 +183,11 @@ class DirectMethod:
     def _as_children(self, series: Series, top: int, pieces: Sequence[Piece]) -> tuple[Child, ...]:
         found = []
         for piece in pieces:
-            prefix, states = piece.prefix, self._states(series, piece.prefix)
-            path = twin.sites_along(series.lattice, prefix) or []
-            order = states.orders[state_after(states, prefix, [kind for kind, _ in path])]
+            prefix = piece.prefix
             known = _calibrate(series, prefix.least)
-            expected = calibration.below(known, top, prefix, order, states.orders[states.first])
-            found.append(Child(prefix.key(), piece.factor, expected))
+            states = states_of(series.lattice, prefix.start, prefix.least)
+            part = known.parts.get(prefix.start, 1.0) * share(series, states, prefix, top)
+            found.append(Child(prefix.key(), piece.factor, max(1.0, known.total(top) * part)))
         return tuple(sorted(found, key=lambda child: child.key))
 
 
@@ -195,11 +212,6 @@ def _run(search: Search, clock: Clock) -> Word:
     return clock.word()
 
 
-@lru_cache(maxsize=64)
-def _states(series: Series, start: int, least: bool) -> SymmetryStates:
-    return without_symmetry(series.lattice) if least else symmetry_states(series.lattice, start)
-
-
 def _calibrate(series: Series, least: bool) -> Calibration:
     with _calibrating:
         return _calibration(series, least)
@@ -208,14 +220,16 @@ def _calibrate(series: Series, least: bool) -> Calibration:
 @lru_cache(maxsize=32)
 def _calibration(series: Series, least: bool) -> Calibration:
     """Count to growing reach for a moment, from one start of each kind."""
-    method, trial = DirectMethod(), Calibrator()
+    from fleetcount.methods.direct.ground import ground  # compiled code is imported late
+
+    method = DirectMethod()
     starts = dict.fromkeys(range(len(series.lattice.sites)), 1) if least else method._starts(series)
-    for reach in counting(4):
-        nodes, seconds = 0, 0.0
-        for start in starts:
-            got = _whole(method, series, start, least, reach)
-            nodes, seconds = nodes + got.nodes, seconds + got.seconds
-        trial.add(reach, nodes, seconds)
+    for start in starts:
+        ground(series, start, least, _FIRST_TRIAL)  # compiling is no part of the trial
+    trial = Calibrator(_FIRST_TRIAL)
+    for reach in counting(_FIRST_TRIAL):
+        got = {start: _whole(method, series, start, least, reach) for start in starts}
+        trial.add({start: g.nodes for start, g in got.items()}, sum(g.seconds for g in got.values()))
         if trial.enough():
             return trial.result()
     raise AssertionError("counting never ends")

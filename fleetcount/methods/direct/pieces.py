@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
@@ -20,36 +21,71 @@ class Piece:
     factor: int
 
 
-def children(series: Series, states: SymmetryStates, prefix: Prefix) -> Iterator[Piece]:
-    """The children of a prefix, whatever their length, each standing for `factor` of them."""
+def possible(series: Series, prefix: Prefix, top: int) -> list[list[int]]:
+    """Before each step of a prefix and after its last: the arms by which the object can go on.
+
+    Raises:
+        InputError: no object begins with the prefix.
+    """
     lattice = series.lattice
     path = twin.sites_along(lattice, prefix)
-    if path is None:
-        raise InputError("no such prefix on this lattice", where=prefix.key())
-    state = state_after(states, prefix, [site for site, _ in path])
-    kind = path[-1][0]
-    for arm in range(len(lattice.arms[kind])):
+    if path is None or not twin.allowed(lattice, prefix, path):
+        raise InputError("a prefix that the object cannot begin with", where=prefix.key())
+    if series.rule.closed:
+        from fleetcount.methods.direct.ground import ground  # compiled code is imported late
+
+        return ground(series, prefix.start, prefix.least, top).returning(prefix.arms)
+    seen: set[twin.Point] = set()
+    found = []
+    for here in path:
+        seen.add(here)
+        arms = range(len(lattice.arms[here[0]]))
+        found.append([arm for arm in arms if twin.step(lattice, here, arm) not in seen])
+    return found
+
+
+def children(series: Series, states: SymmetryStates, prefix: Prefix, top: int) -> Iterator[Piece]:
+    """The children of a prefix, whatever their length, each standing for `factor` of them."""
+    ways = possible(series, prefix, top)[-1]
+    state, kind = state_after(series, states, prefix)
+    for arm in ways:
         factor = states.images[state][kind][arm]
-        if factor and twin.allowed(lattice, prefix, [*path, twin.step(lattice, path[-1], arm)]):
+        if factor:
             yield Piece(prefix.child(arm), factor)
 
 
-def state_after(states: SymmetryStates, prefix: Prefix, kinds: Sequence[int]) -> int:
-    """The symmetry state of a prefix whose sites are of these kinds."""
-    state = states.first
-    for arm, kind in zip(prefix.arms, kinds, strict=False):
+def share(series: Series, states: SymmetryStates, prefix: Prefix, top: int) -> float:
+    """The share of a start's nodes that is expected below a prefix.
+
+    Every step that was possible takes an equal part of what lies below (D. E. Knuth, Math. Comp. 29 (1975) 121), so
+    the shares of a prefix's children, each times its factor, add up to its own.
+    """
+    ways = possible(series, prefix, top)
+    if any(arm not in arms for arm, arms in zip(prefix.arms, ways, strict=False)):
+        return 0.0  # it cannot come home in time
+    order = states.orders[state_after(series, states, prefix)[0]]
+    return states.orders[states.first] / order / math.prod(map(len, ways[:-1]))
+
+
+def state_after(series: Series, states: SymmetryStates, prefix: Prefix) -> tuple[int, int]:
+    """The symmetry state after a prefix, and the kind of its last site."""
+    state, kind = states.first, prefix.start
+    for arm in prefix.arms:
         if states.images[state][kind][arm] == 0:
             raise InputError("a prefix that another one stands for", where=prefix.key())
-        state = states.onward[state][kind][arm]
-    return state
+        state, kind = states.onward[state][kind][arm], series.lattice.arms[kind][arm].target
+    return state, kind
 
 
 def taken_out(
-    series: Series, states: SymmetryStates, prefix: Prefix, without: Sequence[Prefix]
+    series: Series, states: SymmetryStates, prefix: Prefix, top: int, without: Sequence[Prefix]
 ) -> tuple[list[Piece], list[Piece]]:
     """What remains of a unit without some subtrees: pieces to search whole, and prefixes that were passed through."""
     if not without:
         return [Piece(prefix, 1)], []
+    for cut in without:
+        if cut[:2] != prefix[:2]:
+            raise _stranger(cut)
     cuts = {cut.arms for cut in without}
     passed_through = {arms[:i] for arms in cuts for i in range(len(prefix.arms), len(arms))}
     whole, passed, todo = [], [], [Piece(prefix, 1)]
@@ -59,12 +95,14 @@ def taken_out(
             cuts.discard(piece.prefix.arms)
         elif piece.prefix.arms in passed_through:
             passed.append(piece)
-            todo += [Piece(c.prefix, piece.factor * c.factor) for c in children(series, states, piece.prefix)]
+            for child in children(series, states, piece.prefix, top):
+                todo.append(Piece(child.prefix, piece.factor * child.factor))
         else:
             whole.append(piece)
     if cuts:
-        arms = min(cuts)
-        raise InputError(
-            "a subtree to leave out is not part of the unit", where=prefix._replace(arms=arms).key()
-        )
+        raise _stranger(prefix._replace(arms=min(cuts)))
     return whole, passed
+
+
+def _stranger(cut: Prefix) -> InputError:
+    return InputError("a subtree to leave out is not part of the unit", where=cut.key())

@@ -21,18 +21,23 @@ FIRST_SLICE = 1 << 17
 LEAST_SLICE = 1 << 10
 
 
-def check_bound(ground: Ground) -> None:
+def check_bound(lattice: str, arms: int, order: int) -> None:
     """Prove that no 64-bit sum overflows within a slice.
 
-    Each node visited adds to a sum at most (arms * arms) objects times its weight, and the weight never exceeds the
-    order of the symmetry group of the start, since it is the index of one of its subgroups.
+    Each node visited adds to a sum at most arms * arms objects times its weight, and the weight never exceeds the
+    order of the symmetry group of the start, since it is the index of one of its subgroups. A call may visit the
+    leaves of one node more than its limit.
+
+    Args:
+        lattice: its name.
+        arms: columns of the tables of neighbours.
+        order: symmetries that keep the start.
     """
-    nodes = SLICE_NODES + ground.arms + 1
-    order = max(ground.states.orders)
-    if nodes * ground.arms * ground.arms * order >= 2**63:
+    nodes = SLICE_NODES + arms + 1
+    if nodes * arms * arms * order >= 2**63:
         raise InputError(
             "too many arms and symmetries for 64-bit slices",
-            where=f"lattice {ground.series.lattice.name}",
+            where=f"lattice {lattice}",
             mend=f"arms * arms * order of the group must stay under {2**63 // nodes}",
         )
 
@@ -44,7 +49,7 @@ class Search:
     """
 
     def __init__(self, ground: Ground, arms: tuple[int, ...]) -> None:
-        check_bound(ground)
+        check_bound(ground.series.lattice.name, ground.arms, max(ground.states.orders))
         self.ground = ground
         self.arms = arms
         self.base = len(arms)
@@ -57,7 +62,7 @@ class Search:
         self._closed = ground.series.rule.closed
         patch = ground.patch
         if self._closed:
-            self._marks = ground.home(arms[0] if arms else 0)
+            self._marks = ground.home(arms[0] if arms else 0).copy()
         else:
             self._marks = patch.free.astype(np.int32)
             self._marks[0] = -VISITED

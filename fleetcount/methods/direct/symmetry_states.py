@@ -9,6 +9,7 @@ lattice 48.
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from functools import lru_cache
 
 from fleetcount.lattice.model import Lattice
 from fleetcount.lattice.symmetry import arm_map, stabilizer
@@ -31,6 +32,17 @@ class SymmetryStates:
     images: list[list[list[int]]] = field(default_factory=list)
     onward: list[list[list[int]]] = field(default_factory=list)
     orders: list[int] = field(default_factory=list)
+
+
+@lru_cache(maxsize=64)
+def states_of(lattice: Lattice, start: int, least: bool) -> SymmetryStates:
+    """The states of prefixes from a start site; nobody may change them.
+
+    Args:
+        least: all other sites are greater than the start in a total order that translations keep. No symmetry but
+            the identity keeps that order.
+    """
+    return without_symmetry(lattice) if least else symmetry_states(lattice, start)
 
 
 def without_symmetry(lattice: Lattice) -> SymmetryStates:
