@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import contextlib
 import time
 import uuid
 from collections import deque
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 
 from fleetcount.errors import FleetcountError, StoppedError, TrustError
 from fleetcount.fleet.core import MOST_UNITS, Bundle, Core, Pace, budget_for
@@ -47,6 +48,8 @@ class Coordinator:
         self._core = Core(budget_for(forecast.seconds, ledger_bytes), Pace(rate))
         self._renewed = time.monotonic()
         self._shown = 0.0
+        self._arrived: deque[tuple[str, HandBack | Exception]] = deque()
+        self._unbooked: list[Bundle] = []
         self._recent: deque[tuple[float, int]] = deque()
         self._seconds = 0.0
 
@@ -125,7 +128,9 @@ class Coordinator:
             self._crew.submit(HandOut(self._task, bundle.token, parts, bundle.seconds))
 
     def _receive(self, arrived: Sequence[tuple[str, HandBack | Exception]]) -> None:
-        for token, what in arrived:
+        self._arrived.extend(arrived)
+        while self._arrived:
+            token, what = self._arrived.popleft()
             if isinstance(what, HandBack):
                 self._take_back(what)
             elif isinstance(what, FleetcountError):
@@ -137,6 +142,13 @@ class Coordinator:
         bundle = self._core.back(back.token, back.nodes, back.seconds)
         if bundle is None:
             return
+        try:
+            self._book(back, bundle)
+        except BaseException:
+            self._unbooked.append(bundle)
+            raise
+
+    def _book(self, back: HandBack, bundle: Bundle) -> None:
         verdicts = self._store.accept(self._lease, back.answers)
         refused = [a for a, v in zip(back.answers, verdicts, strict=True) if v is Verdict.REFUSED]
         if refused:
@@ -182,14 +194,21 @@ class Coordinator:
     def _wind_up(self) -> None:
         """Stop the kernels, take what they have, put the rest back; whatever goes wrong here is left to the lease."""
         deadline = time.monotonic() + _PATIENCE
-        try:
+        with self._in_passing("not everything could be awaited"):
             self._crew.stop()
             while self._core.out and time.monotonic() < deadline:
                 self._receive(self._crew.collect(_TICK))
-            for token, bundle in list(self._core.out.items()):
-                self._hand_back(token, bundle.keys)
-        except Exception as error:  # noqa: BLE001 - the first error is the one to report
-            self._observer.note(f"not everything could be handed back: {error}")
+        with self._in_passing("not everything could be handed back"):
+            for bundle in [*self._unbooked, *self._core.out.values()]:
+                self._hand_back(bundle.token, bundle.keys)
+
+    @contextlib.contextmanager
+    def _in_passing(self, what: str) -> Iterator[None]:
+        """Only note what goes wrong: an error that came before is the one to report."""
+        try:
+            yield
+        except Exception as error:  # noqa: BLE001 - see above
+            self._observer.note(f"{what}: {error}")
 
     def _show(self, at_once: bool = False) -> None:
         now = time.monotonic()

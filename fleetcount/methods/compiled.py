@@ -11,13 +11,14 @@ import contextlib
 import platform
 import threading
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
 from filelock import FileLock
 from numba.core import config as _numba_config
 
+from fleetcount.errors import FleetcountError
 from fleetcount.host import cache_directory
 from fleetcount.methods.engine import engine_digest, versions
 
@@ -62,17 +63,23 @@ def kernel(
 
 
 @contextlib.contextmanager
-def _filling(method: str) -> Any:
+def _filling(method: str) -> Iterator[None]:
     place = folder(method)
-    place.mkdir(parents=True, exist_ok=True)
     config: Any = _numba_config  # its settings are not declared
     old = config.CACHE_DIR
-    with FileLock(place / "filling.lock"):
-        config.CACHE_DIR = str(place)
-        try:
+    try:
+        place.mkdir(parents=True, exist_ok=True)
+        with FileLock(place / "filling.lock"):
+            config.CACHE_DIR = str(place)
             yield
-        finally:
-            config.CACHE_DIR = old
+    except OSError as error:
+        raise FleetcountError(
+            f"compiled kernels cannot be kept ({error.strerror or error})",
+            where=str(place),
+            mend="set FLEETCOUNT_CACHE to a folder that can be written to and has room",
+        ) from error
+    finally:
+        config.CACHE_DIR = old
 
 
 def is_warm(method: str, name: str, traits: tuple[object, ...]) -> bool:

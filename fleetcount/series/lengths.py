@@ -2,9 +2,15 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Sequence
 
 from fleetcount.errors import InputError
+
+GREATEST = 1_000_000
+"""No method reaches as far; it keeps a broken text from filling the memory."""
+
+_RUN = re.compile(r"(\d{1,18})(?:-(\d{1,18}))?", re.ASCII)
 
 
 def format_lengths(lengths: Iterable[int]) -> str:
@@ -21,12 +27,16 @@ def format_lengths(lengths: Iterable[int]) -> str:
 def parse_lengths(text: str) -> Sequence[int]:
     """The lengths of such a text, sorted."""
     lengths: set[int] = set()
-    try:
-        for run in text.split(","):
-            first, _, last = run.partition("-")
-            lengths.update(range(int(first), int(last or first) + 1))
-    except ValueError:
-        raise InputError(
-            "not a set of lengths", where=repr(text), mend="write for example 0-22 or 3,5-7"
-        ) from None
+    for run in text.split(","):
+        match = _RUN.fullmatch(run)
+        first, last = (int(match[1]), int(match[2] or match[1])) if match else (1, 0)
+        if first > last:
+            raise InputError(
+                "not a set of lengths", where=repr(text[:80]), mend="write for example 0-22 or 3,5-7"
+            )
+        if last > GREATEST:
+            raise InputError(
+                f"length {last} is absurd", where=repr(text[:80]), mend=f"at most {GREATEST} is possible"
+            )
+        lengths.update(range(first, last + 1))
     return tuple(sorted(lengths))

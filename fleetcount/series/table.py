@@ -57,6 +57,8 @@ class CoefficientTable:
 
     def cut(self, to: int) -> CoefficientTable:
         """The table up to a length; asking beyond its reach is an error that says how far it goes."""
+        if to < 0:
+            raise InputError(f"length {to} is negative", where=self.series.title(), mend="lengths begin at 0")
         if self.final is None or to > self.final:
             raise InputError(
                 f"the term of length {to} is not final",

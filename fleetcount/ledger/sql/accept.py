@@ -28,11 +28,17 @@ Judged = TallyRecord | TrustError
 
 
 def read(batch: Sequence[Answer]) -> list[Judged]:
-    """The records of the answers, or what is wrong with them: the part that needs no database."""
+    """The records of the answers, or what is wrong with them: the part that needs no database.
+
+    Their rows, once checked, stay behind in the texts: thousands of small tuples kept at once would cost more
+    than all else. The rare answer that must be compared is read again.
+    """
     records: list[Judged] = []
     for answer in batch:
         try:
-            records.append(judging.read(answer))
+            tally = judging.read(answer)
+            tally.rows.rows.clear()
+            records.append(tally)
         except TrustError as error:
             records.append(error)
     return records
@@ -47,7 +53,7 @@ class _Unit:
     weight: int
     state: State
     token: str | None
-    tally: TallyRecord | None = None
+    text: str = ""
 
 
 @dataclass
@@ -113,7 +119,7 @@ def _known(
     for some in batches(settled):
         query = sa.select(tallies.c.unit, stored_in(tallies)).where(tallies.c.unit.in_(some))
         for row in connection.execute(query):
-            settled[row.unit].tally = TallyRecord.parse(record.unpack(row.stored))
+            settled[row.unit].text = record.unpack(row.stored)
     return known
 
 
@@ -129,7 +135,10 @@ def _judge(
     if reading is None or unit is None:
         raise TrustError("the ledger has no such unit", where=judging.unit_name(tally))
     judging.check_fit(tally, reading, unit.factor)
-    verdict = judging.verdict(unit.state, unit.token, answer.token, unit.tally, tally)
+    stored = None
+    if unit.state in SETTLED:
+        stored, tally = TallyRecord.parse(unit.text), TallyRecord.parse(answer.text)
+    verdict = judging.verdict(unit.state, unit.token, answer.token, stored, tally)
     if verdict is Verdict.ACCEPTED:
         judging.check_new(tally, [key for key, _ in tally.children if (number, key) in known])
     return verdict
@@ -163,7 +172,7 @@ def _add(
         "stored": record.pack(answer.text),
     })  # fmt: skip
     unit.state = states.after(unit.state, states.settling(len(tally.children)))
-    unit.token, unit.tally = None, tally
+    unit.token, unit.text = None, answer.text
     new.settled.append(
         {"_id": unit.id, "_state": unit.state, "_nodes": tally.nodes, "_seconds": float(answer.seconds)}
     )

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import operator
 import threading
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
-from functools import lru_cache
+from functools import cache, lru_cache
 from math import lcm
 from typing import Any
 
@@ -46,6 +47,17 @@ class Ground:
     onward: Array
     run: Callable[..., bool]
     _homes: dict[int, Array] = field(default_factory=dict)
+
+    def tables(self) -> tuple[Array, ...]:
+        """Neighbours, in-neighbours, whether there is a way back, and kinds, as the kernels index with them: unsigned,
+        which spares them the test for counting from the end."""
+        patch = self.patch
+        return (
+            patch.next.view(np.uint32),
+            patch.previous.view(np.uint32),
+            patch.back,
+            patch.kind.view(np.uint16),
+        )
 
     @property
     def arms(self) -> int:
@@ -125,7 +137,7 @@ def _ground(series: Series, start: int, least: bool, top: int) -> Ground:
     patch = patch_of(series, start, least, top)
     states = states_of(lattice, start, least)
     shape = (len(states.orders), len(lattice.sites), width(lattice))
-    images, onward = np.ones(shape, dtype=np.int32), np.zeros(shape, dtype=np.int32)
+    images, onward = np.ones(shape, dtype=np.int32), np.zeros(shape, dtype=np.uint32)
     for table, known in ((images, states.images), (onward, states.onward)):
         table[:, :, : len(known[0][0])] = known
     return Ground(series, start, least, top, patch, states, images, onward, _kernel(series))
@@ -156,23 +168,43 @@ def width(lattice: Lattice) -> int:
 def kernel_of(series: Series) -> tuple[str, tuple[int, ...]]:
     """Name and traits of the kernel that counts a series."""
     columns, lattice = width(series.lattice), series.lattice
-    return ("polygon", (columns,)) if series.rule.closed else ("walk", (columns, int(lattice.one_way)))
+    if series.rule.closed:
+        return "polygon", (columns,)
+    return "walk", (columns, int(lattice.one_way), levels(series))
+
+
+def levels(series: Series) -> int:
+    """How many of the last steps the kernel adds up without visiting, beyond the very last."""
+    if series.rule.closed:
+        return 2
+    return 2 if series.lattice.one_way or _has_triangle(series.lattice) else 3
+
+
+@cache
+def _has_triangle(lattice: Lattice) -> bool:
+    """Whether three steps can lead around a triangle."""
+    joined = {(arc.source, arc.target, arc.cell) for arc in lattice.arcs}
+    return any(
+        (a.source, b.target, tuple(map(operator.add, a.cell, b.cell))) in joined
+        for a in lattice.arcs
+        for b in lattice.arms[a.target]
+    )
 
 
 def _kernel(series: Series) -> Callable[..., bool]:
     name, traits = kernel_of(series)
-    table = np.zeros((1, traits[0]), dtype=np.int32)
+    table = np.zeros((1, traits[0]), dtype=np.uint32)
     back = np.zeros((1, traits[0]), dtype=np.uint8)
-    cube = np.ones((1, 1, traits[0]), dtype=np.int32)
+    images, onward = (np.ones((1, 1, traits[0]), dtype=kept) for kept in (np.int32, np.uint32))
     marks = np.full(1, -1, dtype=np.int32)
-    kind = np.zeros(1, dtype=np.int16)
+    kind = np.zeros(1, dtype=np.uint16)
     stack = Stack.of(8)
 
     def walk(run: Callable[..., bool]) -> None:
-        run(table, table, back, kind, cube, cube, marks, *stack.arrays(), 0)
+        run(table, table, back, kind, images, onward, marks, *stack.arrays(), 0)
 
     def polygon(run: Callable[..., bool]) -> None:
-        run(table, kind, cube, cube, marks, *stack.arrays(), 0)
+        run(table, kind, images, onward, marks, *stack.arrays(), 0)
 
     if series.rule.closed:
         return compiled.kernel("direct", name, kernels.polygon_kernel, traits, polygon)
@@ -193,7 +225,7 @@ class Stack:
     @classmethod
     def of(cls, top: int) -> Stack:
         """Empty arrays for lengths up to `top`."""
-        small = [np.zeros(top + 3, dtype=np.int32) for _ in range(3)]
+        small = [np.zeros(top + 3, dtype=np.uint32) for _ in range(3)]
         wide = [np.zeros(top + 3, dtype=np.int64) for _ in range(2)]
         path, arm, state = small
         weight, sums = wide

@@ -11,7 +11,7 @@ All loops share one way of working. The stack of the depth-first search lies in 
 `images[state, kind, arm]` is the number of images of a step under the symmetries that keep the prefix (0 where
 another arm stands for this one) and `onward[state, kind, arm]` the state after it; state 0 is: no symmetry left.
 
-Overflow: a node adds at most arms * arms * weight to any sum, where weight never exceeds the order of the
+Overflow: a node adds at most arms * arms * arms * weight to any sum, where weight never exceeds the order of the
 symmetry group. `search.SLICE_NODES` bounds the nodes of a call, and `search.check_bound` proves with these three
 numbers that no sum reaches 2**63.
 """
@@ -20,7 +20,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from numba import njit
+from numba import njit, uint32
 
 DEPTH, FLOOR, TOP, NODES = range(4)
 REGISTERS = 4
@@ -29,13 +29,20 @@ VISITED = 16384
 """Taken off `free[site]` while the site is visited, so that one look tells both; more than any coordination number."""
 
 
-def walk_kernel(arms: int, one_way: bool) -> Callable[..., bool]:
+def walk_kernel(arms: int, one_way: bool, levels: int) -> Callable[..., bool]:
     """Counts self-avoiding walks; returns whether the subtree above the floor is exhausted.
 
-    `nxt` and `prv` are int32 [sites + 1, arms], the sites that each leads to and comes from, zeros anywhere.
-    `free[site]` is the number of free neighbours a site leads to. The prefix at depth TOP - 3 is the deepest that
-    is marked: the walks of its last two steps are added up from `free` without visiting them. A neighbour x of
-    a site w that is not marked yet still counts w among its free neighbours if x leads back to w, hence the `back`.
+    `nxt` and `prv` are uint32 [sites + 1, arms], the sites that each leads to and comes from, zeros anywhere.
+    `free[site]` is the number of free neighbours a site leads to. The prefix at depth TOP - 1 - levels is the deepest
+    that is marked; all walks beyond are added up from `free` without visiting them.
+
+    Two levels, any lattice: below the marked w, a free neighbour x has free[x] steps, and each free neighbour y of x
+    has free[y], less one if y leads back to x, which is not marked.
+
+    Three levels, undirected lattices without triangles: below the marked w a free neighbour v is not marked either. Of
+    its free neighbours x each has free[x] - 1 steps, v being left out, and from there free[y] - 1 for each free
+    neighbour y. Only v itself is one y too many, free[v] - 1 for each of its free[v] neighbours x; and no other y is
+    next to v, for that would be a triangle.
     """
 
     @njit(nogil=True, cache=True)
@@ -44,7 +51,7 @@ def walk_kernel(arms: int, one_way: bool) -> Callable[..., bool]:
     ):
         depth = reg[DEPTH]
         floor = reg[FLOOR]
-        last = reg[TOP] - 3
+        last = reg[TOP] - 1 - levels
         nodes = 0
         while nodes < limit:
             here = path[depth]
@@ -56,7 +63,7 @@ def walk_kernel(arms: int, one_way: bool) -> Callable[..., bool]:
                     return True
                 free[here] += VISITED
                 for j in range(arms):
-                    free[prv[here, j]] += 1
+                    free[prv[here, uint32(j)]] += 1
                 depth -= 1
                 continue
             arm[depth] = a + 1
@@ -75,7 +82,7 @@ def walk_kernel(arms: int, one_way: bool) -> Callable[..., bool]:
             depth += 1
             sums[depth + 1] += factor * free[there]
             for j in range(arms):
-                free[prv[there, j]] -= 1
+                free[prv[there, uint32(j)]] -= 1
             free[there] -= VISITED
             if depth < last:
                 path[depth] = there
@@ -85,19 +92,36 @@ def walk_kernel(arms: int, one_way: bool) -> Callable[..., bool]:
                 continue
             one = 0
             two = 0
+            three = 0
             for i in range(arms):
-                x = nxt[there, i]
-                f = free[x]
-                if f >= 0:
-                    nodes += 1
-                    one += f
+                v = nxt[there, uint32(i)]
+                f = free[v]
+                if f < 0:
+                    continue
+                nodes += 1
+                one += f
+                if f == 0:
+                    continue
+                if levels == 2:
                     for k in range(arms):
-                        two += max(free[nxt[x, k]] - (back[x, k] if one_way else 1), 0)
+                        two += max(free[nxt[v, uint32(k)]] - (back[v, uint32(k)] if one_way else 1), 0)
+                    continue
+                nodes += f
+                for k in range(arms):
+                    x = nxt[v, uint32(k)]
+                    g = free[x]
+                    if g > 0:
+                        two += g - 1
+                        for m in range(arms):
+                            three += max(free[nxt[x, uint32(m)]] - 1, 0)
+                three -= f * (f - 1)
             sums[depth + 2] += factor * one
             sums[depth + 3] += factor * two
+            if levels == 3:
+                sums[depth + 4] += factor * three
             free[there] += VISITED
             for j in range(arms):
-                free[prv[there, j]] += 1
+                free[prv[there, uint32(j)]] += 1
             depth -= 1
         reg[DEPTH] = depth
         reg[NODES] += nodes
@@ -159,7 +183,7 @@ def polygon_kernel(arms: int) -> Callable[..., bool]:
             elif depth + 3 == top:
                 two = 0
                 for i in range(arms):
-                    if home[nxt[there, i]] == 1:
+                    if home[nxt[there, uint32(i)]] == 1:
                         two += 1
                 nodes += two
                 sums[top] += factor * two

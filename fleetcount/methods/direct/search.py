@@ -8,7 +8,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from fleetcount.errors import InputError, InternalError
-from fleetcount.methods.direct.ground import START, Array, Ground, Stack
+from fleetcount.methods.direct.ground import START, Array, Ground, Stack, levels
 from fleetcount.methods.direct.kernels import DEPTH, FLOOR, NODES, TOP, VISITED
 
 SLICE_NODES = 1 << 24
@@ -24,21 +24,21 @@ LEAST_SLICE = 1 << 10
 def check_bound(lattice: str, arms: int, order: int) -> None:
     """Prove that no 64-bit sum overflows within a slice.
 
-    Each node visited adds to a sum at most arms * arms objects times its weight, and the weight never exceeds the
-    order of the symmetry group of the start, since it is the index of one of its subgroups. A call may visit the
-    leaves of one node more than its limit.
+    Each node visited adds to a sum at most arms * arms * arms objects times its weight, and the weight never exceeds
+    the order of the symmetry group of the start, since it is the index of one of its subgroups. A call may visit what
+    is below one node more than its limit.
 
     Args:
         lattice: its name.
         arms: columns of the tables of neighbours.
         order: symmetries that keep the start.
     """
-    nodes = SLICE_NODES + arms + 1
-    if nodes * arms * arms * order >= 2**63:
+    nodes = SLICE_NODES + arms * arms + arms + 1
+    if nodes * arms * arms * arms * order >= 2**63:
         raise InputError(
             "too many arms and symmetries for 64-bit slices",
             where=f"lattice {lattice}",
-            mend=f"arms * arms * order of the group must stay under {2**63 // nodes}",
+            mend=f"arms * arms * arms * order of the group must stay under {2**63 // nodes}",
         )
 
 
@@ -73,19 +73,19 @@ class Search:
     @staticmethod
     def reaches(ground: Ground, depth: int) -> bool:
         """Whether a prefix of that depth leaves the kernels enough steps; they count the last ones without visiting."""
-        return depth <= ground.top - 4
+        return depth < ground.top - 1 - levels(ground.series)
 
     def slice(self) -> bool:
         """Run one slice; returns whether the subtree is exhausted down to the floor."""
         if self.done:
             return True
         began = time.thread_time()
-        ground, patch = self.ground, self.ground.patch
-        kind, images, onward = patch.kind, ground.images, ground.onward
+        ground = self.ground
+        following, previous, back, kind = ground.tables()
         if self._closed:
-            arrays: tuple[Array, ...] = (patch.next, kind, images, onward, self._marks)
+            arrays: tuple[Array, ...] = (following, kind, ground.images, ground.onward, self._marks)
         else:
-            arrays = (patch.next, patch.previous, patch.back, kind, images, onward, self._marks)
+            arrays = (following, previous, back, kind, ground.images, ground.onward, self._marks)
         done = ground.run(*arrays, *self._stack.arrays(), self._slice)
         spent = time.thread_time() - began
         self._collect(spent)
