@@ -63,7 +63,7 @@ def direction_form(direction: Form, lattice: Lattice) -> Form:
     return tuple(x // divisor for x in image)
 
 
-def cross(lattice: Lattice, a: Sequence[int], b: Sequence[int]) -> int:
+def cross(a: Sequence[int], b: Sequence[int]) -> int:
     """The two-dimensional cross product of two vectors in cell coordinates: their area in units of the cell's."""
     return a[0] * b[1] - a[1] * b[0]
 

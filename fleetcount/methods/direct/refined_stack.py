@@ -1,0 +1,76 @@
+"""The arrays that a refined search writes: marks on the patch, and the stack by depth."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from fleetcount.methods.direct.kernels import REGISTERS
+
+Array = np.ndarray[Any, np.dtype[Any]]
+
+
+@dataclass
+class RefinedMarks:
+    """How often sites are visited, how many visited sites are beside them, and which edges are used."""
+
+    seen: Array
+    near: Array
+    used: Array
+
+    @classmethod
+    def of(cls, sites: int, edges: int) -> RefinedMarks:
+        """Nothing visited; the wall always is."""
+        seen = np.zeros(sites + 1, dtype=np.int32)
+        seen[0] = 1 << 20
+        return cls(seen, np.zeros(sites + 1, dtype=np.int32), np.zeros(edges + 1, dtype=np.uint8))
+
+    def arrays(self) -> tuple[Array, ...]:
+        return self.seen, self.near, self.used
+
+
+@dataclass
+class RefinedStack:
+    """By depth, in the order of the kernel's arguments."""
+
+    level: Array
+    most: Array
+    least: Array
+    crest: Array
+    last_way: Array
+    spread: Array
+    norm: Array
+    vector: Array
+    path: Array
+    arm: Array
+    state: Array
+    weight: Array
+    sums: Array
+    reg: Array
+
+    @classmethod
+    def of(cls, top: int, dimension: int, shape: tuple[int, int, int, int]) -> RefinedStack:
+        """Empty arrays for lengths up to `top`."""
+        depths = top + 3
+        pairs = [np.zeros((depths, 2), dtype=np.int32) for _ in range(3)]
+        small = [np.zeros(depths, dtype=np.int32) for _ in range(2)]
+        wide = [np.zeros(depths, dtype=np.int64) for _ in range(2)]
+        walk = [np.zeros(depths, dtype=np.uint32) for _ in range(3)]
+        return cls(
+            *pairs,
+            *small,
+            *wide,
+            np.zeros((depths, max(dimension, 1)), dtype=np.int64),
+            *walk,
+            np.zeros(depths, dtype=np.int64),
+            np.zeros(shape, dtype=np.int64),
+            np.zeros(REGISTERS, dtype=np.int64),
+        )
+
+    def arrays(self) -> tuple[Array, ...]:
+        return (
+            self.level, self.most, self.least, self.crest, self.last_way, self.spread, self.norm, self.vector,
+            self.path, self.arm, self.state, self.weight, self.sums, self.reg,
+        )  # fmt: skip
