@@ -22,7 +22,7 @@ def whole(series: Series, prefix: Prefix, to: int) -> Tally:
     """
     counts: dict[int, int] = {}
     path = sites_along(series.lattice, prefix)
-    if path is not None and allowed(series.lattice, prefix, path):
+    if path is not None and len(prefix.arms) <= to and allowed(series.lattice, prefix, path):
         _extend(series, prefix, path, to, counts)
     return Tally.of_counts(counts)
 
