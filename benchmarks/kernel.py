@@ -22,7 +22,7 @@ from typing import NamedTuple
 from fleetcount.lattice import catalogue
 from fleetcount.methods import registry
 from fleetcount.methods.face import Word
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from fleetcount.series.tally import Tally
 
 SOURCE = Path(__file__).with_name("kernel_twin.c")

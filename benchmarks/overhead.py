@@ -88,7 +88,7 @@ def long_reading() -> None:
     from fleetcount.lattice.catalogue import find
     from fleetcount.ledger import tables
     from fleetcount.ledger.access import open_store
-    from fleetcount.series.definition import define
+    from fleetcount.series.defining import define
 
     watch = Watch()
     watch._mark("command line and imports so far")

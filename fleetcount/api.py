@@ -44,7 +44,7 @@ def count(
     from fleetcount.fleet.counting import Options, count_series
     from fleetcount.lattice.catalogue import find
     from fleetcount.ledger.access import open_store
-    from fleetcount.series.definition import define
+    from fleetcount.series.defining import define
 
     if isinstance(to, bool) or not isinstance(to, int):
         raise SeriesError(f"the greatest length is {to!r}", where="to", mend="give a whole number")

@@ -46,7 +46,7 @@ def count(
 
     Walks are counted as directed from a fixed start; polygons per cell, without root or sense.
     """
-    from fleetcount.fleet.interrupt import Interrupts, StopFlag
+    from fleetcount.fleet.interrupt import Interrupts, StopFlag, ignore
 
     options.one_form(json=as_json, csv=as_csv, plain=plain)
     if cores is not None and not 1 <= cores <= 1024:
@@ -66,8 +66,9 @@ def count(
             with Screen(quiet) as screen:
                 how.observer = screen
                 table, location = _counted(lattice, object_name, start, to, ledger, how)
-    except KeyboardInterrupt:
-        raise _stopped() from None
+    except (StoppedError, KeyboardInterrupt) as error:
+        ignore()  # the program is on its way out; more of them would only spoil its exit status
+        raise error if isinstance(error, StoppedError) else _stopped() from None
     if per_site:
         table = table.per_site()
     options.give(table, json=as_json, csv=as_csv, plain=plain)

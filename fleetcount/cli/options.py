@@ -40,7 +40,7 @@ Start = Annotated[
 def define(lattice: str, object_name: str, start: str | None) -> Series:
     """The series that a command line defines."""
     from fleetcount.lattice.catalogue import find
-    from fleetcount.series.definition import define as define_series
+    from fleetcount.series.defining import define as define_series
 
     found = find(lattice)
     for warning in found.warnings:

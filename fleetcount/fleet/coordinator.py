@@ -196,7 +196,7 @@ class Coordinator:
         deadline = time.monotonic() + _PATIENCE
         with self._in_passing("not everything could be awaited"):
             self._crew.stop()
-            while self._core.out and time.monotonic() < deadline:
+            while self._core.out and time.monotonic() < deadline and not self._stop.hurry:
                 self._receive(self._crew.collect(_TICK))
         with self._in_passing("not everything could be handed back"):
             for bundle in [*self._unbooked, *self._core.out.values()]:

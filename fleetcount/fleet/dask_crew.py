@@ -44,6 +44,7 @@ class DaskCrew:
         self._futures: dict[str, Future[Any]] = {}
         self._done: queue.SimpleQueue[str] = queue.SimpleQueue()
         self._slots, self._looked = 0, -_LOOK_AGAIN
+        self._stopped = False
 
     def slots(self) -> int:
         now = time.monotonic()
@@ -61,7 +62,8 @@ class DaskCrew:
         future.add_done_callback(lambda _: self._done.put(token))
 
     def collect(self, timeout: float) -> list[tuple[str, HandBack | Exception]]:
-        self._upkeep()
+        if not self._stopped:
+            self._upkeep()
         tokens = []
         try:
             tokens.append(self._done.get(timeout=timeout))
@@ -72,6 +74,7 @@ class DaskCrew:
         return [(token, self._take(token)) for token in tokens if token in self._futures]
 
     def stop(self) -> None:
+        self._stopped = True
         if self._stop is not None:
             self._stop()
         else:

@@ -1,9 +1,10 @@
 """Ctrl-C, SIGTERM and SIGHUP while a series is counted.
 
 The first signal raises the stop flag. While units are counted that is enough: the coordinator sees it within a slice
-and hands everything back. Everywhere else (imports, compiling, starting processes, reading the ledger) nobody looks
-at the flag, so there the signal interrupts at once. A second one is never waited for. A signal that this process was
-started to ignore, as `nohup` does, stays ignored.
+and hands everything back; after a second one it waits for no answer any more, and only a third one interrupts, since
+in the middle of a transaction it would leave the ledger locked. Everywhere else (imports, compiling, starting
+processes, reading the ledger) nobody looks at the flag, so there the first signal interrupts at once. A signal that
+this process was started to ignore, as `nohup` does, stays ignored.
 """
 
 from __future__ import annotations
@@ -19,10 +20,18 @@ SIGNALS = ("SIGINT", "SIGTERM", "SIGHUP")
 
 
 class StopFlag:
-    """A plain attribute that kernels' callers look at after each slice."""
+    """Plain attributes that are looked at after each slice: `up`, stop; `hurry`, and wait for nobody."""
 
     def __init__(self) -> None:
         self.up = False
+        self.hurry = False
+
+
+def ignore() -> None:
+    """From now on the signals do nothing in this process."""
+    for name in SIGNALS:
+        if hasattr(signal, name):
+            signal.signal(signal.Signals[name], signal.SIG_IGN)
 
 
 class Interrupts:
@@ -49,7 +58,7 @@ class Interrupts:
 
     @contextlib.contextmanager
     def patient(self) -> Iterator[None]:
-        """Within the block somebody looks at the flag: a first signal raises it and nothing else."""
+        """Within the block somebody looks at the flag: the first two signals do nothing but raise it."""
         self._patient = True
         try:
             yield
@@ -57,6 +66,7 @@ class Interrupts:
             self._patient = False
 
     def _handle(self, number: int, frame: FrameType | None) -> None:
-        again, self._stop.up = self._stop.up, True
-        if again or not self._patient:
+        seen = self._stop.up + self._stop.hurry
+        self._stop.up, self._stop.hurry = True, seen > 0
+        if seen > 1 or not self._patient:
             raise KeyboardInterrupt

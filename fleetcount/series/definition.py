@@ -52,8 +52,8 @@ class Series:
 
     @property
     def plain(self) -> bool:
-        """Nothing but lengths is asked for, everywhere, of an object that only avoids itself."""
-        return self.rule.plain and not (self.end or self.statistics or self.moments or self.walls)
+        """Nothing but lengths is asked for, of an object that only avoids itself and may end anywhere."""
+        return self.rule.plain and not (self.end or self.statistics or self.moments)
 
     @property
     def divisor(self) -> int:

@@ -7,7 +7,7 @@ from collections.abc import Callable
 import pytest
 
 from fleetcount.lattice import catalogue
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from fleetcount.trust import published
 from fleetcount.trust.published import PublishedTable
 from tests.published import own_lattices

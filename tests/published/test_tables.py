@@ -8,7 +8,7 @@ from pathlib import Path
 import pytest
 
 from fleetcount.lattice import catalogue
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from fleetcount.trust import published
 from fleetcount.trust.published import PublishedTable, PublishedTerms
 from tests.published import own_lattices

@@ -11,7 +11,8 @@ import pytest
 
 from fleetcount.lattice import catalogue
 from fleetcount.lattice.symmetry import all_alike
-from fleetcount.series.definition import Series, define, from_canonical
+from fleetcount.series.defining import define
+from fleetcount.series.definition import Series, from_canonical
 from fleetcount.trust import published
 
 DATA = files("fleetcount.trust").joinpath("data")

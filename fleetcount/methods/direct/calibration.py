@@ -10,6 +10,8 @@ import time
 from collections.abc import Mapping
 from dataclasses import dataclass
 
+from fleetcount.methods.direct.keys import Prefix
+
 KERNEL_SECONDS = 0.04
 """A trial that spent so long in kernels tells the rate well enough."""
 
@@ -30,14 +32,14 @@ class Calibration:
     Attributes:
         first: the least reach that was tried; the others follow without a gap.
         nodes: nodes of the whole count up to each reach, symmetry used; they never decrease.
-        parts: for each start site its part of the nodes at the greatest reach.
+        parts: for each root its part of the nodes at the greatest reach.
         growth: factor by which the nodes grow with each further step.
         rate: nodes a second of core time on this machine.
     """
 
     first: int
     nodes: tuple[float, ...]
-    parts: Mapping[int, float]
+    parts: Mapping[Prefix, float]
     growth: float
     rate: float
 
@@ -64,11 +66,11 @@ class Calibrator:
     def __init__(self, first: int) -> None:
         self.first = first
         self.nodes: list[float] = []
-        self.parts: dict[int, float] = {}
+        self.parts: dict[Prefix, float] = {}
         self.seconds: list[float] = []
         self._began = time.thread_time()
 
-    def add(self, nodes: Mapping[int, int], seconds: float) -> None:
+    def add(self, nodes: Mapping[Prefix, int], seconds: float) -> None:
         """Take in the nodes of the next reach, by start site."""
         total = float(max(sum(nodes.values()), 1, *self.nodes[-1:]))
         self.nodes.append(total)

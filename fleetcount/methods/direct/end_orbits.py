@@ -56,17 +56,23 @@ def unfolded(series: Series, table: Tally) -> Tally:
     before = next((i for i, s in enumerate(series.statistics) if s.name == "end"), None)
     if before is None or series.start is None:
         return table
-    group, periods = kept_symmetries(series, series.start), series.lattice.periods
+    group, at, width = kept_symmetries(series, series.start), 1 + before, series.lattice.periods + 1
+    orbits: dict[End, set[End]] = {}
+    together = Tally(table.width)  # what a unit has counted plainly stands at any end of an orbit
+    for place, values in table.rows.items():
+        end = place[at : at + width]
+        if end not in orbits:
+            orbit = set(_orbit(group, end[:-1], end[-1]))
+            orbits.update(dict.fromkeys(orbit, orbit))
+        together.add(Tally(table.width, {(*place[:at], *min(orbits[end]), *place[at + width :]): values}))
     spread = Tally(table.width)
-    for place, values in table.sorted_rows():
-        at = 1 + before
-        orbit = set(_orbit(group, place[at : at + periods], place[at + periods]))
-        for value in values:
-            if value % len(orbit):
-                raise TrustError(f"{value} is no multiple of the {len(orbit)} ends of an orbit", where=f"row {place}")
+    for place, values in together.sorted_rows():
+        orbit = orbits[place[at : at + width]]
+        if any(value % len(orbit) for value in values):
+            raise TrustError(f"{values[0]} is no multiple of the {len(orbit)} ends of an orbit", where=f"row {place}")
         share = tuple(value // len(orbit) for value in values)
         for end in orbit:
-            spread.rows[(*place[:at], *end, *place[at + periods + 1 :])] = share
+            spread.rows[(*place[:at], *end, *place[at + width :])] = share
     return spread
 
 

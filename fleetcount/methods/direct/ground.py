@@ -7,7 +7,6 @@ import threading
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
 from functools import cache, lru_cache
-from math import lcm
 from typing import Any
 
 import numpy as np
@@ -17,6 +16,8 @@ from fleetcount.lattice.model import Lattice
 from fleetcount.lattice.patch import Patch, build, check_fits, distance_to
 from fleetcount.methods import compiled
 from fleetcount.methods.direct import kernels
+from fleetcount.methods.direct.allowed import allowed_sites
+from fleetcount.methods.direct.keys import Prefix
 from fleetcount.methods.direct.symmetry_states import SymmetryStates, states_of
 from fleetcount.series.definition import Series
 
@@ -38,8 +39,7 @@ class Ground:
     """
 
     series: Series
-    start: int
-    least: bool
+    root: Prefix
     top: int
     patch: Patch
     states: SymmetryStates
@@ -69,7 +69,7 @@ class Ground:
         Rooted at the least site of an undirected lattice each polygon is run through in one sense only: it comes
         home by a greater arm than it left by.
         """
-        one_sense = self.least and not self.series.lattice.one_way
+        one_sense = self.root.least and not self.series.lattice.one_way
         above = first_arm if one_sense else -1
         if above not in self._homes:
             patch = self.patch
@@ -95,28 +95,30 @@ class Ground:
         return found
 
 
-def ground(series: Series, start: int, least: bool, top: int) -> Ground:
-    """The ground of a series for lengths up to `top`, from a small cache."""
+def ground(series: Series, root: Prefix, top: int) -> Ground:
+    """The ground of a series from a root, a prefix without arms, for lengths up to `top`; from a small cache."""
     with _building:
-        return _ground(series, start, least, top)
+        return _ground(series, root, top)
 
 
-def patch_of(series: Series, start: int, least: bool, top: int) -> Patch:
+def patch_of(series: Series, root: Prefix, top: int) -> Patch:
     """The sites that a search up to length `top` can stand on or look at.
 
     Walks look at the neighbours of all sites up to step top - 1. A polygon on an undirected lattice never goes
     further from its root than half its length.
     """
-    allowed = _greater(series.lattice, start) if least else None
-    return build(series.lattice, start, _radius(series, top), allowed, width=width(series.lattice))
+    return build(
+        series.lattice, root.start, _radius(series, top), allowed_sites(series, root), width=width(series.lattice)
+    )
 
 
-def check_reach(series: Series, starts: Iterable[int], top: int) -> None:
+def check_reach(series: Series, roots: Iterable[Prefix], top: int) -> None:
     """Raise InputError if this machine's memory or the kernels' marks do not allow that length."""
     if top < 0:
         raise SeriesError(f"length {top} is negative", where=series.title(), mend="lengths begin at 0")
-    for start in starts:
-        check_fits(series.lattice, start, _radius(series, top), width=width(series.lattice))
+    for root in roots:
+        allowed = allowed_sites(series, root)
+        check_fits(series.lattice, root.start, _radius(series, top), allowed, width=width(series.lattice))
     if top > kernels.VISITED // 2:
         raise SeriesError(
             f"length {top} is beyond what the direct method can mark",
@@ -132,31 +134,12 @@ def _radius(series: Series, top: int) -> int:
 
 
 @lru_cache(maxsize=24)
-def _ground(series: Series, start: int, least: bool, top: int) -> Ground:
+def _ground(series: Series, root: Prefix, top: int) -> Ground:
     lattice = series.lattice
-    patch = patch_of(series, start, least, top)
-    states = states_of(lattice, start, least)
-    shape = (len(states.orders), len(lattice.sites), width(lattice))
-    images, onward = np.ones(shape, dtype=np.int32), np.zeros(shape, dtype=np.uint32)
-    for table, known in ((images, states.images), (onward, states.onward)):
-        table[:, :, : len(known[0][0])] = known
-    return Ground(series, start, least, top, patch, states, images, onward, _kernel(series))
-
-
-def _greater(lattice: Lattice, start: int) -> Callable[[Array, Array], Array]:
-    """The sites after the start in the lexicographic order of positions, which translations keep."""
-    scale = lcm(*(x.denominator for site in lattice.sites for x in site.at))
-    at = np.array([[int(x * scale) for x in site.at] for site in lattice.sites], dtype=np.int64)
-
-    def allowed(kinds: Array, cells: Array) -> Array:
-        away = at[kinds] - at[start]
-        away[:, : lattice.periods] += scale * cells
-        sign = np.zeros(len(kinds), dtype=np.int64)
-        for axis in range(lattice.dimension):
-            sign = np.where(sign == 0, np.sign(away[:, axis]), sign)
-        return sign > 0
-
-    return allowed
+    patch = patch_of(series, root, top)
+    states = states_of(series, root.start, root.least)
+    images, onward = states.tables(width(lattice))
+    return Ground(series, root, top, patch, states, images, onward, load(series))
 
 
 def width(lattice: Lattice) -> int:
@@ -191,7 +174,8 @@ def _has_triangle(lattice: Lattice) -> bool:
     )
 
 
-def _kernel(series: Series) -> Callable[..., bool]:
+def load(series: Series) -> Callable[..., bool]:
+    """The kernel of a series, compiled or from the cache."""
     name, traits = kernel_of(series)
     table = np.zeros((1, traits[0]), dtype=np.uint32)
     back = np.zeros((1, traits[0]), dtype=np.uint8)

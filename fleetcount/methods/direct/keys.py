@@ -31,6 +31,10 @@ class Prefix(NamedTuple):
         place = f"@{','.join(map(str, self.cell))}" if self.cell else ""
         return f"{self.start}{place}{mark}:{'.'.join(map(str, self.arms))}"
 
+    def root(self) -> Prefix:
+        """The root that the prefix is below."""
+        return self._replace(arms=())
+
     def child(self, arm: int) -> Prefix:
         return self._replace(arms=(*self.arms, arm))
 

@@ -127,4 +127,5 @@ def by_arm(table: Sequence[Sequence[object]], patch: Patch) -> Array:
     kinds = np.zeros((len(table), patch.next.shape[1]), dtype=np.int32)
     for kind, row in enumerate(table):
         kinds[kind, : len(row)] = [int(bool(x)) for x in row]
-    return kinds[patch.kind]
+    spread: Array = np.take(kinds, patch.kind, axis=0)
+    return spread

@@ -29,18 +29,22 @@ def possible(series: Series, prefix: Prefix, top: int) -> list[list[int]]:
     """
     lattice = series.lattice
     path = twin.sites_along(lattice, prefix)
-    if path is None or not twin.allowed(lattice, prefix, path):
+    if path is None or not twin.begins(series, prefix, path):
         raise InputError("a prefix that the object cannot begin with", where=prefix.key())
-    if series.rule.closed:
+    if series.rule.closed and series.plain:
         from fleetcount.methods.direct.ground import ground  # compiled code is imported late
 
-        return ground(series, prefix.start, prefix.least, top).returning(prefix.arms)
-    seen: set[twin.Point] = set()
+        return ground(series, prefix.root(), top).returning(prefix.arms)
     found = []
-    for here in path:
-        seen.add(here)
-        arms = range(len(lattice.arms[here[0]]))
-        found.append([arm for arm in arms if twin.step(lattice, here, arm) not in seen])
+    aims = series.rule.closed or series.end is not None
+    if aims:
+        from fleetcount.methods.direct.refined_ground import homeward  # compiled code is imported late
+
+        near = homeward(series, prefix, top)
+    for depth, here in enumerate(path):
+        before = path[: depth + 1]
+        arms = sorted(near[depth]) if aims else list(range(len(lattice.arms[here[0]])))
+        found.append([arm for arm in arms if twin.begins(series, prefix, [*before, twin.step(lattice, here, arm)])])
     return found
 
 

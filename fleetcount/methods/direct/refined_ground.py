@@ -6,7 +6,7 @@ import threading
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 
@@ -14,7 +14,8 @@ from fleetcount.lattice.model import Lattice
 from fleetcount.lattice.patch import Patch, build, distance_to
 from fleetcount.methods import compiled
 from fleetcount.methods.direct import refined_kernel as rk
-from fleetcount.methods.direct.ground import allowed_sites, width
+from fleetcount.methods.direct.allowed import allowed_sites
+from fleetcount.methods.direct.ground import width
 from fleetcount.methods.direct.keys import Prefix
 from fleetcount.methods.direct.measures import SORTS, Measure, layers, measure
 from fleetcount.methods.direct.refined_stack import RefinedMarks, RefinedStack
@@ -30,12 +31,35 @@ _AVOIDS = {"sites": rk.SITES, "edges": rk.EDGES, "neighbours": rk.NEIGHBOURS}
 _ENDS = {"anywhere": rk.ANYWHERE, "trapped": rk.TRAPPED, "on top": rk.ON_TOP}
 
 
+class Tables(NamedTuple):
+    """What a kernel reads, in the order of its arguments; see `refined_kernel.refined_kernel`."""
+
+    following: Array
+    kind: Array
+    images: Array
+    onward: Array
+    beside: Array
+    edge: Array
+    reverse: Array
+    home: Array
+    gain: Array
+    value: Array
+    way: Array
+    height: Array
+    open_arms: Array
+    square: Array
+    radius: Array
+    dual: Array
+    place: Array
+    unclosed: Array
+
+
 @dataclass(frozen=True)
 class RefinedGround:
     """Read-only arrays shared by all searches of one series from one root, up to one reach.
 
     Attributes:
-        tables: what the kernel reads, in its order.
+        tables: what the kernel reads.
         edges: number of edges where they are marked, else 0.
         farthest: greatest squared distance from the start, in units of 1 over (scale squared times metric_scale).
     """
@@ -46,7 +70,7 @@ class RefinedGround:
     patch: Patch
     states: SymmetryStates
     measures: tuple[Measure, ...]
-    tables: tuple[Array, ...]
+    tables: Tables
     edges: int
     farthest: int
     run: Callable[..., bool]
@@ -67,6 +91,27 @@ def refined_ground(series: Series, root: Prefix, top: int) -> RefinedGround:
     """The ground of a series from a root: a prefix with no arm but the first, where that one matters."""
     with _building:
         return _ground(series, root, top)
+
+
+def homeward(series: Series, prefix: Prefix, top: int) -> list[set[int]]:
+    """Before each step of a prefix and after its last: the arms from which the goal can still be reached in time."""
+    found, here = [], rk.START
+    patch = refined_ground(series, _home_root(prefix, prefix.arms[:1]), top).patch
+    for depth in range(len(prefix.arms) + 1):
+        near = set()
+        for arm, there in enumerate(patch.next[here].tolist()):
+            first = prefix.arms[:1] if depth else (arm,)
+            home = refined_ground(series, _home_root(prefix, first), top).tables.home
+            if there and depth + 1 + int(home[there]) <= top:
+                near.add(arm)
+        found.append(near)
+        if depth < len(prefix.arms):
+            here = int(patch.next[here, prefix.arms[depth]])
+    return found
+
+
+def _home_root(prefix: Prefix, first: tuple[int, ...]) -> Prefix:
+    return prefix._replace(arms=first if prefix.least else ())
 
 
 def traits_of(series: Series) -> rk.Traits:
@@ -101,7 +146,7 @@ def _ground(series: Series, root: Prefix, top: int) -> RefinedGround:
     edge, reverse, edges = _edges(lattice, patch) if rule.avoids == "edges" else (_nothing(2), _nothing(2), 0)
     dual = positions @ np.array(lattice.gram, dtype=np.int64)
     square = (positions * dual).sum(axis=1)
-    tables = (
+    tables = Tables(
         patch.next.view(np.uint32),
         patch.kind.view(np.uint16),
         *states.tables(traits.arms),
@@ -115,12 +160,13 @@ def _ground(series: Series, root: Prefix, top: int) -> RefinedGround:
         layers(lattice, lattice.up, patch) if series.uses_up else np.zeros(patch.sites + 1, dtype=np.int32),
         patch.free.astype(np.int32),
         _squares(series, patch, square),
+        square,
         np.ascontiguousarray(dual.T),
         np.ascontiguousarray(positions.T),
         np.array([m.unclosed for m in measures] + [0] * (2 - len(measures)), dtype=np.int32),
     )
     return RefinedGround(
-        series, root, top, patch, states, measures, tables, edges, int(square.max()), _kernel(traits, tables)
+        series, root, top, patch, states, measures, tables, edges, int(square.max()), load(series)
     )
 
 
@@ -213,19 +259,29 @@ def _squares(series: Series, patch: Patch, square: Array) -> Array:
     """Squared distances and squared heights from the start, int64 [2, sites + 1], those that are asked for first."""
     names = set(series.moments)
     wanted = []
-    if {"end2", "along2", "monomer2", "gyration2"} & names:
+    if {"end2", "along2"} & names:
         wanted.append(square)
     if {"height2", "along2"} & names:
         height = layers(series.lattice, series.lattice.up, patch).astype(np.int64)
         wanted.append((height - height[rk.START]) ** 2)
     while len(wanted) < 2:
         wanted.append(np.zeros(patch.sites + 1, dtype=np.int64))
-    return np.stack(wanted)
+    return np.ascontiguousarray(np.stack(wanted))
 
 
-def _kernel(traits: rk.Traits, tables: tuple[Array, ...]) -> Callable[..., bool]:
+def load(series: Series) -> Callable[..., bool]:
+    """The kernel of a series, compiled or from the cache."""
+    traits = traits_of(series)
+
     def example(run: Callable[..., bool]) -> None:
+        flat32, flat64 = np.zeros((1, 1), dtype=np.int32), np.zeros((2, 1), dtype=np.int64)
+        line32, line64 = np.zeros(1, dtype=np.int32), np.zeros(1, dtype=np.int64)
+        index, cube = np.zeros((1, 1), dtype=np.uint32), np.zeros((1, 1, 1), dtype=np.uint32)
+        stacked = np.zeros((2, 1, 1), dtype=np.int32)
+        symmetry = (np.ones((1, 1, 1), dtype=np.int32), cube)
+        tables = (index, np.zeros(1, dtype=np.uint16), *symmetry, index, index, index, line32, stacked)
+        rest = (np.zeros((2, 1), dtype=np.int32), flat32, line32, line32, flat64, line64, flat64, flat64, line32)
         stack, marks = RefinedStack.of(4, traits.dimension, (6, 1, 1, 4)), RefinedMarks.of(1, 1)
-        run(*tables, *marks.arrays(), *stack.arrays(), 0)
+        run(*tables, *rest, *marks.arrays(), *stack.arrays(), 0)
 
     return compiled.kernel("direct", "refined", rk.refined_kernel, tuple(traits), example)

@@ -78,7 +78,8 @@ def refined_kernel(
     Tables (read only): `nxt` uint32 [sites + 1, arms]; `beside` uint32 [sites + 1, adjacent], every adjacent site once;
     `edge` uint32 [sites + 1, arms] with `reverse` likewise, numbers of the edges taken there and back, 0 for none;
     `home` int32 [sites + 1] steps to the goal; `gain` int32 [2, sites + 1, arms]; `value` int32 [2, sites + 1]; `way`
-    int32 [kinds, arms]; `height`, `open_arms` int32 [sites + 1]; `square` int64 [2, sites + 1]; `dual` and `place` int64
+    int32 [kinds, arms]; `height`, `open_arms` int32 [sites + 1]; `square` int64 [2, sites + 1],
+    moments of the end; `radius` int64 [sites + 1], squared distances; `dual` and `place` int64
     [dimension, sites + 1], positions with and without the metric applied; `unclosed` int32 [2], taken off a statistic
     when an object closes, because the start was counted already.
 
@@ -96,8 +97,8 @@ def refined_kernel(
 
     @njit(nogil=True, cache=True)
     def run(  # type: ignore[no-untyped-def]
-        nxt, kind, images, onward, beside, edge, reverse, home, gain, value, way, height, open_arms, square, dual, place,
-        unclosed, seen, near, used, level, most, least, crest, last_way, spread, norm, vector,
+        nxt, kind, images, onward, beside, edge, reverse, home, gain, value, way, height, open_arms, square,
+        radius, dual, place, unclosed, seen, near, used, level, most, least, crest, last_way, spread, norm, vector,
         path, arm, state, weight, sums, reg, limit,
     ):  # fmt: skip
         depth = reg[DEPTH]
@@ -195,9 +196,9 @@ def refined_kernel(
             far = 0
             wide = 0
             if monomers or pairs:
-                far = spread[depth] + square[0, there]
+                far = spread[depth] + radius[there]
             if pairs:
-                wide = norm[depth] + square[0, there]
+                wide = norm[depth] + radius[there]
                 for i in range(dimension):
                     wide += 2 * vector[depth, i] * dual[i, there]
 
@@ -250,7 +251,8 @@ def refined_kernel(
                 if ends == TRAPPED:
                     ways_on = open_arms[there]
                     for k in range(arms):
-                        if seen[nxt[there, uint32(k)]] != 0:
+                        beyond = nxt[there, uint32(k)]
+                        if beyond != 0 and seen[beyond] != 0:
                             ways_on -= 1
                     counts = ways_on == 0
                 elif ends == ON_TOP:

@@ -22,10 +22,9 @@ class RefinedMarks:
 
     @classmethod
     def of(cls, sites: int, edges: int) -> RefinedMarks:
-        """Nothing visited; the wall always is."""
-        seen = np.zeros(sites + 1, dtype=np.int32)
-        seen[0] = 1 << 20
-        return cls(seen, np.zeros(sites + 1, dtype=np.int32), np.zeros(edges + 1, dtype=np.uint8))
+        """Nothing visited."""
+        seen, near = (np.zeros(sites + 1, dtype=np.int32) for _ in range(2))
+        return cls(seen, near, np.zeros(edges + 1, dtype=np.uint8))
 
     def arrays(self) -> tuple[Array, ...]:
         return self.seen, self.near, self.used
@@ -54,19 +53,14 @@ class RefinedStack:
     def of(cls, top: int, dimension: int, shape: tuple[int, int, int, int]) -> RefinedStack:
         """Empty arrays for lengths up to `top`."""
         depths = top + 3
-        pairs = [np.zeros((depths, 2), dtype=np.int32) for _ in range(3)]
-        small = [np.zeros(depths, dtype=np.int32) for _ in range(2)]
-        wide = [np.zeros(depths, dtype=np.int64) for _ in range(2)]
-        walk = [np.zeros(depths, dtype=np.uint32) for _ in range(3)]
+        level, most, least = (np.zeros((depths, 2), dtype=np.int32) for _ in range(3))
+        crest, last_way = (np.zeros(depths, dtype=np.int32) for _ in range(2))
+        spread, norm, weight = (np.zeros(depths, dtype=np.int64) for _ in range(3))
+        vector = np.zeros((depths, max(dimension, 1)), dtype=np.int64)
+        path, arm, state = (np.zeros(depths, dtype=np.uint32) for _ in range(3))
+        sums, reg = np.zeros(shape, dtype=np.int64), np.zeros(REGISTERS, dtype=np.int64)
         return cls(
-            *pairs,
-            *small,
-            *wide,
-            np.zeros((depths, max(dimension, 1)), dtype=np.int64),
-            *walk,
-            np.zeros(depths, dtype=np.int64),
-            np.zeros(shape, dtype=np.int64),
-            np.zeros(REGISTERS, dtype=np.int64),
+            level, most, least, crest, last_way, spread, norm, vector, path, arm, state, weight, sums, reg
         )
 
     def arrays(self) -> tuple[Array, ...]:

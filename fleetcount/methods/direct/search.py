@@ -1,24 +1,14 @@
-"""One depth-first search below one prefix: slice by slice, resumable, able to hand back what it has not seen."""
+"""The search with the plain kernels: walks and polygons by length."""
 
 from __future__ import annotations
 
-import time
-from collections.abc import Iterator
-
 import numpy as np
 
-from fleetcount.errors import InputError, InternalError
+from fleetcount.errors import InputError
 from fleetcount.methods.direct.ground import START, Array, Ground, Stack, levels
-from fleetcount.methods.direct.kernels import DEPTH, FLOOR, NODES, TOP, VISITED
-
-SLICE_NODES = 1 << 24
-"""No call of a kernel visits more nodes than this (and one node's leaves)."""
-
-SLICE_SECONDS = 0.05
-"""Length of a slice to aim at, between 0.02 and 0.1 s."""
-
-FIRST_SLICE = 1 << 17
-LEAST_SLICE = 1 << 10
+from fleetcount.methods.direct.kernels import DEPTH, FLOOR, TOP, VISITED
+from fleetcount.methods.direct.slices import SLICE_NODES, Slices
+from fleetcount.series.tally import Tally
 
 
 def check_bound(lattice: str, arms: int, order: int) -> None:
@@ -42,23 +32,15 @@ def check_bound(lattice: str, arms: int, order: int) -> None:
         )
 
 
-class Search:
-    """The subtree below `arms`, on a ground. Sums are Python integers by length; kernels' own are cleared each slice.
-
-    A prefix is legal when it avoids itself; `Search` raises InputError when it is not.
-    """
+class Search(Slices):
+    """The subtree below `arms`, on a ground. A prefix that the object cannot begin with is an InputError."""
 
     def __init__(self, ground: Ground, arms: tuple[int, ...]) -> None:
         check_bound(ground.series.lattice.name, ground.arms, max(ground.states.orders))
+        self._own = Stack.of(ground.top)
+        super().__init__(arms, self._own)
         self.ground = ground
-        self.arms = arms
-        self.base = len(arms)
         self.sums: dict[int, int] = {}
-        self.nodes = 0
-        self.seconds = 0.0
-        self.done = False
-        self._slice = FIRST_SLICE
-        self._stack = Stack.of(ground.top)
         self._closed = ground.series.rule.closed
         patch = ground.patch
         if self._closed:
@@ -75,84 +57,51 @@ class Search:
         """Whether a prefix of that depth leaves the kernels enough steps; they count the last ones without visiting."""
         return depth < ground.top - 1 - levels(ground.series)
 
-    def slice(self) -> bool:
-        """Run one slice; returns whether the subtree is exhausted down to the floor."""
-        if self.done:
-            return True
-        began = time.thread_time()
+    def tally(self) -> Tally:
+        """Counts by length; closed objects as closed walks."""
+        ground = self.ground
+        least = ground.series.rule.least_length(ground.series.lattice)
+        return Tally.of_counts({n: c for n, c in self.sums.items() if least <= n <= ground.top})
+
+    def _call(self, limit: int) -> bool:
         ground = self.ground
         following, previous, back, kind = ground.tables()
         if self._closed:
             arrays: tuple[Array, ...] = (following, kind, ground.images, ground.onward, self._marks)
         else:
             arrays = (following, previous, back, kind, ground.images, ground.onward, self._marks)
-        done = ground.run(*arrays, *self._stack.arrays(), self._slice)
-        spent = time.thread_time() - began
-        self._collect(spent)
-        self.done = bool(done) and self._reg(FLOOR) == self.base
-        return bool(done)
+        return bool(ground.run(*arrays, *self._own.arrays(), limit))
 
-    def climb(self) -> Iterator[None]:
-        """Finish the deepest open subtrees first, slice by slice, until the caller has had enough or all is done."""
-        while not self.done:
-            self._stack.reg[FLOOR] = self._reg(DEPTH)
-            while not self.slice():
-                yield
-            yield
-            if not self.done:
-                self._pop()
+    def _collect(self) -> None:
+        sums = self._own.sums
+        for n in np.flatnonzero(sums):
+            self.sums[int(n)] = self.sums.get(int(n), 0) + int(sums[n])
+        sums[:] = 0
 
-    def rest(self) -> Iterator[tuple[tuple[int, ...], int]]:
-        """The prefixes not seen yet, each with its images under the symmetries that keep this search's own prefix.
+    def _columns(self) -> int:
+        return self.ground.arms
 
-        What their parents have already counted of them (the prefix itself, for walks) is taken out of the sums, so
-        call it once, at the end.
-        """
-        if self.done:
-            return
-        ground, stack = self.ground, self._stack
-        path = [*self.arms, *(int(stack.arm[d]) - 1 for d in range(self.base, self._reg(DEPTH)))]
-        for depth in range(self.base, self._reg(DEPTH) + 1):
-            here, state = int(stack.path[depth]), int(stack.state[depth])
-            kind = int(ground.patch.kind[here])
-            for arm in range(int(stack.arm[depth]), ground.arms):
-                there = int(ground.patch.next[here, arm])
-                times = int(ground.images[state, kind, arm])
-                if times and there and self._can_go(there, depth):
-                    factor = times * int(stack.weight[depth])
-                    if not self._closed:
-                        self.sums[depth + 1] -= factor
-                    yield (*path[:depth], arm), factor
-        self.done = True
+    def _images(self, depth: int, arm: int) -> int:
+        ground, stack = self.ground, self._own
+        return int(ground.images[int(stack.state[depth]), ground.patch.kind[int(stack.path[depth])], arm])
 
-    def _can_go(self, there: int, depth: int) -> bool:
-        """Whether a step from `depth` may go to a site: sites visited further on are no obstacle to it."""
-        sites = self._stack.path[: self._reg(DEPTH) + 1]
-        if there in sites[: depth + 1]:
+    def _can_go(self, path: list[int], depth: int, arm: int) -> bool:
+        """Sites visited further on are no obstacle to a step from `depth`."""
+        sites = self._own.path[: self._reg(DEPTH) + 1]
+        there = int(self.ground.patch.next[int(sites[depth]), arm])
+        if there == 0 or there in sites[: depth + 1]:
             return False
         if not self._closed:
             return True
         home = int(self._marks[there]) - (VISITED if there in sites else 0)
         return depth + 1 + home <= self.ground.top
 
-    def _reg(self, which: int) -> int:
-        return int(self._stack.reg[which])
-
-    def _collect(self, spent: float) -> None:
-        stack = self._stack
-        for n in np.flatnonzero(stack.sums):
-            self.sums[int(n)] = self.sums.get(int(n), 0) + int(stack.sums[n])
-        stack.sums[:] = 0
-        nodes = self._reg(NODES)
-        stack.reg[NODES] = 0
-        self.nodes += nodes
-        self.seconds += spent
-        if nodes >= self._slice and spent > 0:
-            aim = int(self._slice * min(4.0, SLICE_SECONDS / spent))
-            self._slice = max(LEAST_SLICE, min(SLICE_NODES, aim))
+    def _leave_out(self, length: int, factor: int) -> None:
+        if not self._closed:
+            self.sums[length] -= factor
 
     def _walk_to_base(self) -> None:
-        ground, stack = self.ground, self._stack
+        ground, stack = self.ground, self._own
         stack.reg[TOP], stack.reg[FLOOR] = ground.top, self.base
         stack.state[0] = ground.states.first
         stack.weight[:] = 1
@@ -166,9 +115,7 @@ class Search:
                 self.done = True
                 return
             if there == 0 or there in stack.path[: depth + 1]:
-                raise InputError(
-                    "a prefix that the object cannot begin with", where=".".join(map(str, self.arms))
-                )
+                raise InputError("a prefix that the object cannot begin with", where=".".join(map(str, self.arms)))
             if int(ground.images[state, kind, arm]) == 0:
                 raise InputError("a prefix that another one stands for", where=".".join(map(str, self.arms)))
             stack.path[depth + 1] = there
@@ -179,7 +126,7 @@ class Search:
 
     def _count_base(self) -> None:
         """What a parent would have counted when it stepped onto this prefix, and the prefix itself."""
-        here = int(self._stack.path[self.base])
+        here = int(self._own.path[self.base])
         if not self._closed:
             self.sums = {self.base: 1, self.base + 1: int(self._marks[here]) + VISITED}
         elif self.base and int(self._marks[here]) - VISITED == 1:
@@ -191,15 +138,3 @@ class Search:
             return
         np.subtract.at(self._marks, self.ground.patch.previous[site], 1)
         self._marks[site] -= VISITED
-
-    def _pop(self) -> None:
-        depth = self._reg(DEPTH)
-        if depth <= self.base:
-            raise InternalError("a search climbed above its own prefix")
-        site = int(self._stack.path[depth])
-        if self._closed:
-            self._marks[site] -= VISITED
-        else:
-            self._marks[site] += VISITED
-            np.add.at(self._marks, self.ground.patch.previous[site], 1)
-        self._stack.reg[DEPTH] = depth - 1

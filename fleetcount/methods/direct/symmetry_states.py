@@ -8,11 +8,18 @@ lattice 48.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from functools import lru_cache
+from typing import TYPE_CHECKING, Any
 
 from fleetcount.lattice.model import Lattice
-from fleetcount.lattice.symmetry import arm_map, stabilizer
+from fleetcount.lattice.symmetry import Symmetry, arm_map
+from fleetcount.methods.direct.kept import kept_symmetries
+from fleetcount.series.definition import Series
+
+if TYPE_CHECKING:
+    import numpy as np
 
 Subgroup = frozenset[int]
 
@@ -33,16 +40,28 @@ class SymmetryStates:
     onward: list[list[list[int]]] = field(default_factory=list)
     orders: list[int] = field(default_factory=list)
 
+    def tables(self, columns: int) -> tuple[np.ndarray[Any, Any], np.ndarray[Any, Any]]:
+        """`images` as int32 and `onward` as uint32 [states, kinds, columns], for kernels."""
+        import numpy as np
+
+        shape = (len(self.orders), len(self.images[0]), columns)
+        images, onward = np.ones(shape, dtype=np.int32), np.zeros(shape, dtype=np.uint32)
+        for table, known in ((images, self.images), (onward, self.onward)):
+            table[:, :, : len(known[0][0])] = known
+        return images, onward
+
 
 @lru_cache(maxsize=64)
-def states_of(lattice: Lattice, start: int, least: bool) -> SymmetryStates:
-    """The states of prefixes from a start site; nobody may change them.
+def states_of(series: Series, start: int, least: bool) -> SymmetryStates:
+    """The states of a series' prefixes from a start site; nobody may change them.
 
     Args:
         least: all other sites are greater than the start in a total order that translations keep. No symmetry but
             the identity keeps that order.
     """
-    return without_symmetry(lattice) if least else symmetry_states(lattice, start)
+    if least:
+        return without_symmetry(series.lattice)
+    return symmetry_states(series.lattice, start, kept_symmetries(series, start))
 
 
 def without_symmetry(lattice: Lattice) -> SymmetryStates:
@@ -52,9 +71,12 @@ def without_symmetry(lattice: Lattice) -> SymmetryStates:
     return states
 
 
-def symmetry_states(lattice: Lattice, start: int) -> SymmetryStates:
-    """The states of prefixes that begin at site `start` of a cell."""
-    group = stabilizer(lattice, start)
+def symmetry_states(lattice: Lattice, start: int, group: Sequence[Symmetry]) -> SymmetryStates:
+    """The states of prefixes that begin at site `start` of a cell.
+
+    Args:
+        group: the symmetries to be used, which fix the start; the identity first.
+    """
     kinds = range(len(lattice.sites))
     # images of arms, only where the element maps the kind of site to itself: it does wherever it fixes the site
     maps = [{kind: arm_map(lattice, g, kind) for kind in kinds if g.images[kind] == kind} for g in group]

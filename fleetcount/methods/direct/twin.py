@@ -24,7 +24,7 @@ def whole(series: Series, prefix: Prefix, to: int) -> Tally:
     """
     tally = Tally(series.width)
     path = sites_along(series.lattice, prefix)
-    if path is not None and begins(series, prefix, path):
+    if path is not None and len(prefix.arms) <= to and begins(series, prefix, path):
         _extend(series, prefix, path, to, tally)
     return tally
 
