@@ -26,6 +26,8 @@ def load(series: Series) -> None:
 def search_of(series: Series, prefix: Prefix, top: int) -> Search | RefinedSearch | None:
     """A search below a prefix; None where too few steps are left for the kernel."""
     if not series.plain:
+        if len(prefix.arms) >= top:
+            return None
         root = prefix._replace(arms=prefix.arms[:1]) if prefix.least else prefix.root()
         return RefinedSearch(refined.refined_ground(series, root, top), prefix.arms)
     base = plain.ground(series, prefix.root(), top)

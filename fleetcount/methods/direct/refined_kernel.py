@@ -268,7 +268,88 @@ def refined_kernel(
                     if pairs:
                         sums[n, s0, s1, columns - 1] += factor * ((n + 1) * far - wide)
 
-            if n < top - closed and not (ends == AT_TARGET and home[there] == 0):
+            if not closed and ends != AT_TARGET and n == top - 1:
+                # The last step: nothing is marked for it, not even the site that it is taken from.
+                for k in range(arms):
+                    x = nxt[there, uint32(k)]
+                    if x == 0:
+                        continue
+                    if avoids == EDGES:
+                        along = edge[there, uint32(k)]
+                        if used[along] != 0 or along == edge[here, a]:
+                            continue
+                    elif seen[x] != 0:
+                        continue
+                    if avoids == NEIGHBOURS and near[x] != 0:
+                        continue
+                    last_factor = factor
+                    if now != 0:
+                        times = images[now, kind[there], uint32(k)]
+                        if times == 0:
+                            continue
+                        last_factor = factor * times
+                    nodes += 1
+                    c0 = s0
+                    c1 = s1
+                    pair = 0
+                    if adjacent > 0:
+                        pair = near[x]
+                        if avoids == EDGES:
+                            pair = (near[x] + fresh if seen[x] == 0 else 0) - 1
+                            if one_way:
+                                over = reverse[there, uint32(k)]
+                                if over != 0 and (used[over] != 0 or over == edge[here, a]):
+                                    pair += 1
+                    if statistics > 0:
+                        if first_sort == ADDED or first_sort == AREA:
+                            c0 += gain[0, there, uint32(k)]
+                        elif first_sort == CONTACTS:
+                            c0 += pair
+                        elif first_sort == TURNED:
+                            c0 += 1 if way[kind[there], uint32(k)] != heading else 0
+                        elif first_sort == REVISITED:
+                            c0 += 1 if seen[x] == 1 else 0
+                        elif first_sort == AT_END:
+                            c0 = value[0, x]
+                        else:
+                            c0 = max(m0, value[0, x]) - min(l0, value[0, x])
+                    if statistics > 1:
+                        if second_sort == ADDED or second_sort == AREA:
+                            c1 += gain[1, there, uint32(k)]
+                        elif second_sort == CONTACTS:
+                            c1 += pair
+                        elif second_sort == TURNED:
+                            c1 += 1 if way[kind[there], uint32(k)] != heading else 0
+                        elif second_sort == REVISITED:
+                            c1 += 1 if seen[x] == 1 else 0
+                        elif second_sort == AT_END:
+                            c1 = value[1, x]
+                        else:
+                            c1 = max(m1, value[1, x]) - min(l1, value[1, x])
+                    if ends == TRAPPED:
+                        ways_on = open_arms[x]
+                        for j in range(arms):
+                            beyond = nxt[x, uint32(j)]
+                            if beyond != 0 and (seen[beyond] != 0 or beyond == there):
+                                ways_on -= 1
+                        if ways_on != 0:
+                            continue
+                    elif ends == ON_TOP:
+                        if height[x] < max(crest[depth], height[there]):
+                            continue
+                    sums[top, c0, c1, 0] += last_factor
+                    for q in range(squares):
+                        sums[top, c0, c1, 1 + q] += last_factor * square[q, x]
+                    if monomers or pairs:
+                        far_out = far + radius[x]
+                        if monomers:
+                            sums[top, c0, c1, 1 + squares] += last_factor * far_out
+                        if pairs:
+                            wide_out = wide + radius[x]
+                            for i in range(dimension):
+                                wide_out += 2 * (vector[depth, i] + place[i, there]) * dual[i, x]
+                            sums[top, c0, c1, columns - 1] += last_factor * ((top + 1) * far_out - wide_out)
+            elif n < top - closed and not (ends == AT_TARGET and home[there] == 0):
                 if avoids == EDGES:
                     used[edge[here, a]] = 1
                 seen[there] += 1

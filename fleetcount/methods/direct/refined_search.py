@@ -106,14 +106,15 @@ class RefinedSearch(Slices):
             stack.weight[depth] = 1
             stack.sums[...] = 0
             self._call(1)
-            if self._reg(NODES) != 1 or int(stack.arm[depth]) != arm + 1:
+            whole = self._reg(DEPTH) == depth  # the kernel has counted all that is below, and marked nothing
+            if int(stack.arm[depth]) != arm + 1 or self._reg(NODES) == 0 or (self._reg(NODES) > 1 and not whole):
                 if self._traits.closed or self._traits.ends == rk.AT_TARGET:  # too far away to come there in time
                     stack.sums[...] = 0
                     self.done = True
                     return
                 raise InputError("a prefix that the object cannot begin with", where=".".join(map(str, self.arms)))
-            stack.reg[NODES] = 0
-            if self._reg(DEPTH) == depth:  # nothing leads on from here
+            self.nodes, stack.reg[NODES] = self._reg(NODES), 0
+            if whole:
                 self.done = True
                 if depth + 1 < self.base:
                     raise InputError("a prefix that leads nowhere", where=".".join(map(str, self.arms)))
