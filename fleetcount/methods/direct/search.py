@@ -7,7 +7,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from fleetcount.errors import InputError, InternalError
+from fleetcount.errors import InputError
 from fleetcount.methods.direct.ground import START, Array, Ground, Stack, levels
 from fleetcount.methods.direct.kernels import DEPTH, FLOOR, NODES, TOP, VISITED
 
@@ -92,15 +92,41 @@ class Search:
         self.done = bool(done) and self._reg(FLOOR) == self.base
         return bool(done)
 
-    def climb(self) -> Iterator[None]:
-        """Finish the deepest open subtrees first, slice by slice, until the caller has had enough or all is done."""
-        while not self.done:
-            self._stack.reg[FLOOR] = self._reg(DEPTH)
-            while not self.slice():
-                yield
+    def climb(self, share: float) -> Iterator[None]:
+        """Finish the deepest open subtrees, slice by slice, so that only siblings near the prefix are left.
+
+        Args:
+            share: of the nodes visited so far; how many more that may take, by the looks of it.
+        """
+        floor = self._floor_within(share)
+        if floor > self._reg(DEPTH):
+            return
+        self._stack.reg[FLOOR] = floor
+        self._slice = max(LEAST_SLICE, min(self._slice, int(share * self.nodes / 4)))
+        while not self.slice():
             yield
-            if not self.done:
-                self._pop()
+
+    def _floor_within(self, share: float) -> int:
+        """The least depth below which no more than that share of what is done is still open.
+
+        As if every subtree were as large as its siblings.
+        """
+        done, part = 0.0, 1.0
+        left: list[float] = []
+        deepest = self._reg(DEPTH)
+        for depth, ways in enumerate(self._open(), self.base):
+            waiting, tried = len(ways), self._tried(depth)
+            all_ways = max(waiting + tried, 1)
+            left.append(part * waiting / all_ways)
+            done += part * (tried - (depth < deepest)) / all_ways
+            part /= all_ways
+        floor, more = deepest + 1, 0.0
+        for depth in range(deepest, self.base - 1, -1):
+            more += left[depth - self.base]
+            if more > share * done:
+                break
+            floor = depth
+        return floor
 
     def rest(self) -> Iterator[tuple[tuple[int, ...], int]]:
         """The prefixes not seen yet, each with its images under the symmetries that keep this search's own prefix.
@@ -110,20 +136,38 @@ class Search:
         """
         if self.done:
             return
-        ground, stack = self.ground, self._stack
+        stack = self._stack
         path = [*self.arms, *(int(stack.arm[d]) - 1 for d in range(self.base, self._reg(DEPTH)))]
-        for depth in range(self.base, self._reg(DEPTH) + 1):
-            here, state = int(stack.path[depth]), int(stack.state[depth])
-            kind = int(ground.patch.kind[here])
-            for arm in range(int(stack.arm[depth]), ground.arms):
-                there = int(ground.patch.next[here, arm])
-                times = int(ground.images[state, kind, arm])
-                if times and there and self._can_go(there, depth):
-                    factor = times * int(stack.weight[depth])
-                    if not self._closed:
-                        self.sums[depth + 1] -= factor
-                    yield (*path[:depth], arm), factor
+        for depth, ways in enumerate(self._open(), self.base):
+            for arm, times in ways:
+                factor = times * int(stack.weight[depth])
+                if not self._closed:
+                    self.sums[depth + 1] -= factor
+                yield (*path[:depth], arm), factor
         self.done = True
+
+    def _open(self) -> list[list[tuple[int, int]]]:
+        """For each depth from the base on the arms not tried yet, each with its images."""
+        return [self._ways(depth, int(self._stack.arm[depth]), self.ground.arms) for depth in self._depths()]
+
+    def _tried(self, depth: int) -> int:
+        """How many arms were tried at a depth, that of the path included."""
+        return len(self._ways(depth, 0, int(self._stack.arm[depth])))
+
+    def _depths(self) -> range:
+        return range(self.base, self._reg(DEPTH) + 1)
+
+    def _ways(self, depth: int, first: int, last: int) -> list[tuple[int, int]]:
+        ground, stack = self.ground, self._stack
+        here, state = int(stack.path[depth]), int(stack.state[depth])
+        kind = int(ground.patch.kind[here])
+        found = []
+        for arm in range(first, last):
+            there = int(ground.patch.next[here, arm])
+            times = int(ground.images[state, kind, arm])
+            if times and there and self._can_go(there, depth):
+                found.append((arm, times))
+        return found
 
     def _can_go(self, there: int, depth: int) -> bool:
         """Whether a step from `depth` may go to a site: sites visited further on are no obstacle to it."""
@@ -191,15 +235,3 @@ class Search:
             return
         np.subtract.at(self._marks, self.ground.patch.previous[site], 1)
         self._marks[site] -= VISITED
-
-    def _pop(self) -> None:
-        depth = self._reg(DEPTH)
-        if depth <= self.base:
-            raise InternalError("a search climbed above its own prefix")
-        site = int(self._stack.path[depth])
-        if self._closed:
-            self._marks[site] -= VISITED
-        else:
-            self._marks[site] += VISITED
-            np.add.at(self._marks, self.ground.patch.previous[site], 1)
-        self._stack.reg[DEPTH] = depth - 1
