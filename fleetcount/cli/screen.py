@@ -12,6 +12,7 @@ if TYPE_CHECKING:
 
 LINE_SECONDS = 10.0
 _NARROW = 60
+_HOPELESS_YEARS = 1e9
 _FIRST_LINE_SECONDS = 2.0
 
 
@@ -36,7 +37,10 @@ def duration(seconds: float | None) -> str:
     if hours < 72:
         return f"{hours} h {minutes:02d} min"
     days = hours / 24
-    return f"{days:.0f} days" if days < 1000 else f"{amount(days / 365.25).strip()} years"
+    years = days / 365.25
+    if years > _HOPELESS_YEARS:
+        return "over a billion years"
+    return f"{days:.0f} days" if days < 1000 else f"{amount(years).strip()} years"
 
 
 def status(snapshot: Snapshot) -> str:
@@ -71,7 +75,7 @@ class Screen:
     def terms(self, table: CoefficientTable) -> None:
         """The first terms, in a short line each on the way to the long reading."""
         shown = ", ".join(str(count) for count in table.counts().values())
-        self._say(f"terms to n={table.final}: {shown}")
+        self._say(f"terms from n={table.least} to n={table.final}: {shown}")
 
     def note(self, text: str) -> None:
         """Something to know."""

@@ -58,7 +58,7 @@ class Terminal:
 @pytest.mark.parametrize(("columns", "stop"), [(100, False), (40, True)])
 def test_the_bar(columns: int, stop: bool, tmp_path: Path) -> None:
     """The bar appears, fits the terminal, and is gone when the count is done or stopped with Ctrl-C."""
-    import pexpect
+    import pexpect  # type: ignore[import-untyped]
 
     env = environment()
     del env["COLUMNS"]
@@ -159,7 +159,8 @@ def test_amounts(value: float, text: str) -> None:
         (7500.0, "2 h 05 min"),
         (86400.0 * 10, "10 days"),
         (86400.0 * 365.25 * 5, "5 years"),
-        (1e300, "3.17e+277 P years"),
+        (86400.0 * 365.25 * 5e4, "50 k years"),
+        (1e300, "over a billion years"),
     ],
 )
 def test_durations(seconds: float | None, text: str) -> None:
