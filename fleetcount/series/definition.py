@@ -107,6 +107,12 @@ def define(lattice: Lattice, object_name: str, start: str | None = None) -> Seri
 def from_canonical(form: Mapping[str, Any], written: Mapping[str, Any]) -> Series:
     """The series of a canonical form, as a ledger or a hand-out carries it, with the names of `Series.written`."""
     name = str(written.get("lattice", "unnamed"))
+    if form.get("format") != FORMAT:
+        raise SeriesError(
+            f"the definition of a series is of format {form.get('format')!r}, this program knows {FORMAT}",
+            where=name,
+            mend="use the version of the program that made it",
+        )
     try:
         names = written.get("sites") or [str(i) for i in range(len(form["lattice"]["positions"]))]
         body = form["lattice"]
@@ -128,8 +134,8 @@ def from_canonical(form: Mapping[str, Any], written: Mapping[str, Any]) -> Serie
         object_name, version = form["object"]
         series = Series(lattice, object_name, form["start"])
         if OBJECTS[object_name].version != version:
-            raise SeriesError(f"the object {object_name} is of version {version}, not known here")
-    except (KeyError, TypeError, ValueError) as error:
+            raise SeriesError(f"the object {object_name} is of version {version}, not known here", where=name)
+    except (ArithmeticError, IndexError, KeyError, TypeError, ValueError) as error:
         raise SeriesError("not the canonical form of a series", where=name) from error
     if series.canonical() != form:
         raise InternalError("a canonical form does not give itself back", where=name)
