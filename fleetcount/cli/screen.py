@@ -12,6 +12,7 @@ if TYPE_CHECKING:
 
 LINE_SECONDS = 10.0
 _NARROW = 60
+_HOPELESS_YEARS = 1e9
 _FIRST_LINE_SECONDS = 2.0
 
 
@@ -36,7 +37,10 @@ def duration(seconds: float | None) -> str:
     if hours < 72:
         return f"{hours} h {minutes:02d} min"
     days = hours / 24
-    return f"{days:.0f} days" if days < 1000 else f"{amount(days / 365.25).strip()} years"
+    years = days / 365.25
+    if years > _HOPELESS_YEARS:
+        return "over a billion years"
+    return f"{days:.0f} days" if days < 1000 else f"{amount(years).strip()} years"
 
 
 def status(snapshot: Snapshot) -> str:
@@ -71,7 +75,7 @@ class Screen:
     def terms(self, table: CoefficientTable) -> None:
         """The first terms, in a short line each on the way to the long reading."""
         shown = ", ".join(str(count) for count in table.counts().values())
-        self._say(f"terms to n={table.final}: {shown}")
+        self._say(f"terms from n={table.least} to n={table.final}: {shown}")
 
     def note(self, text: str) -> None:
         """Something to know."""
@@ -91,29 +95,32 @@ class Screen:
             print(text, file=sys.stderr, flush=True)
 
     def _move(self, snapshot: Snapshot) -> None:
-        if self._progress is None:
-            self._open()
         left = "" if snapshot.remaining <= 0 else f"{duration(snapshot.seconds_left)} left"
-        self._progress.update(
-            self._task,
-            completed=snapshot.share,
-            top=snapshot.top,
-            units=f"{snapshot.settled}/{snapshot.units} units",
-            rate=f"{amount(snapshot.rate)}nodes/s",
-            left=left,
-        )
+        fields: dict[str, Any] = {
+            "completed": snapshot.share,
+            "top": snapshot.top,
+            "units": f"{snapshot.settled}/{snapshot.units} units",
+            "rate": f"{amount(snapshot.rate)}nodes/s",
+            "left": left,
+        }
+        if self._progress is None:
+            self._open(fields)
+        self._progress.update(self._task, **fields)
 
-    def _open(self) -> None:
+    def _open(self, fields: dict[str, Any]) -> None:
         from rich.console import Console
         from rich.progress import BarColumn, Progress, TaskProgressColumn, TextColumn
+        from rich.table import Column
 
         console = Console(stderr=True)
         columns: list[Any] = [TextColumn("n={task.fields[top]}"), BarColumn(), TaskProgressColumn()]
         if console.width >= _NARROW:
             columns += [TextColumn("{task.fields[units]}"), TextColumn("{task.fields[rate]}")]
         columns.append(TextColumn("{task.fields[left]}"))
+        # Room for the ^C that a terminal echoes: at the edge it would break the line, and the bar would stay.
+        columns.append(TextColumn("  ", table_column=Column(min_width=2, no_wrap=True)))
         self._progress = Progress(*columns, console=console, transient=True, refresh_per_second=4)
-        self._task = self._progress.add_task("", total=1.0, top="", units="", rate="", left="")
+        self._task = self._progress.add_task("", total=1.0, **fields)
         self._progress.start()
 
     def _close(self) -> None:

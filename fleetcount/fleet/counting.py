@@ -104,6 +104,8 @@ def _count(
     written = canonical.text(series.written())
     store.open_series(series.digest, series.text, written, time.time_ns() // 1000)
     with _lease(store, series, options.wait) as lease:
+        if _covered(store, series, top):
+            return  # whoever held it has just finished it
         _note_machine(store, series)
         count = _Count(store, lease, series, method, options, interrupts)
         if forecast.seconds <= OWN_PROCESS_SECONDS:

@@ -146,6 +146,12 @@ class Series:
 def from_canonical(form: Mapping[str, Any], written: Mapping[str, Any]) -> Series:
     """The series of a canonical form, as a ledger or a hand-out carries it, with the names of `Series.written`."""
     name = str(written.get("lattice", "unnamed"))
+    if form.get("format") != FORMAT:
+        raise SeriesError(
+            f"the definition of a series is of format {form.get('format')!r}, this program knows {FORMAT}",
+            where=name,
+            mend="use the version of the program that made it",
+        )
     try:
         names = written.get("sites") or [str(i) for i in range(len(form["lattice"]["positions"]))]
         lattice = _lattice(form["lattice"], name, names, form.get("up"))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import functools
 import os
 import signal
 import sqlite3
@@ -16,10 +17,32 @@ from typing import Any
 
 import psutil
 
+from fleetcount.lattice.catalogue import find
+from fleetcount.methods import registry
+from fleetcount.series.definition import define
+
 PROGRAM = (sys.executable, "-c", "from fleetcount.cli.main import run; run()")
 ROOT = Path(__file__).parents[2]
 LONGEST = 120
 """Seconds that anything here may take on a very busy machine; only a hang takes so long."""
+
+
+FLEET_SECONDS = 3.5
+"""Well above what a count in one process may take, since a forecast is noisy."""
+
+
+@functools.cache
+def few_seconds() -> int:
+    """The length up to which square walks take this machine a few seconds: enough to be counted by a local fleet."""
+    series = define(find("square"), "walk", None)
+    method = registry.get("direct")
+    method.prepare(series, range(5))
+    return next(n for n in range(18, 40) if method.forecast(series, range(n + 1)).seconds > FLEET_SECONDS)
+
+
+def line() -> tuple[str, ...]:
+    """The command line that counts those."""
+    return ("count", "square", "walk", "--to", str(few_seconds()), "--cores", "2")
 
 
 def environment(**more: str) -> dict[str, str]:
@@ -156,14 +179,4 @@ def tallies(ledger: Path) -> list[tuple[Any, ...]]:
 def units_out(ledger: Path) -> int:
     """Units of the ledger that are out."""
     rows = query(ledger, "SELECT count(*) FROM units WHERE state = 'out'")
-    return int(rows[0][0]) if rows else 0
-
-
-def long_tallies(ledger: Path, top: int) -> int:
-    """Accepted tallies of the readings to that length."""
-    rows = query(
-        ledger,
-        "SELECT count(*) FROM tallies JOIN units ON units.id = tallies.unit JOIN readings ON "
-        f"readings.id = units.reading WHERE readings.lengths = '0-{top}' AND units.nodes > 1",
-    )
     return int(rows[0][0]) if rows else 0

@@ -11,8 +11,8 @@ import psutil
 import pytest
 
 from fleetcount.fleet.interrupt import Interrupts, StopFlag
-from tests.fleet.program import Running, query, running, tallies, units_out, wait_for
-from tests.fleet.test_kills import LINE, NAME, connected, finished
+from tests.fleet.program import Running, line, query, running, tallies, units_out, wait_for
+from tests.fleet.test_kills import NAME, connected, finished
 
 SLACK = 4.0
 """Seconds allowed on a busy machine beyond the three that the program promises."""
@@ -103,7 +103,7 @@ def at_peace(ledger: Path) -> None:
 @pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
 def test_during_start_up(number: signal.Signals, tmp_path: Path) -> None:
     """While the libraries are being loaded."""
-    with running(*LINE, cwd=tmp_path) as one:
+    with running(*line(), cwd=tmp_path) as one:
         maps = Path(f"/proc/{one.process.pid}/maps")
         if not maps.exists():
             pytest.skip("needs /proc to see how far it is")
@@ -115,7 +115,7 @@ def test_during_start_up(number: signal.Signals, tmp_path: Path) -> None:
 @pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
 def test_during_compiling(number: signal.Signals, tmp_path: Path) -> None:
     """While kernels are compiled for the first time; the next run compiles them."""
-    with running(*LINE, cwd=tmp_path, env={"FLEETCOUNT_CACHE": str(tmp_path / "cache")}) as one:
+    with running(*line(), cwd=tmp_path, env={"FLEETCOUNT_CACHE": str(tmp_path / "cache")}) as one:
         one.says("compiling")
         time.sleep(0.5)
         interrupted(one, number)
@@ -124,7 +124,7 @@ def test_during_compiling(number: signal.Signals, tmp_path: Path) -> None:
 
 def test_during_the_short_reading(tmp_path: Path) -> None:
     """While the first terms are counted in the command's own process."""
-    with running(*LINE, cwd=tmp_path) as one:
+    with running(*line(), cwd=tmp_path) as one:
         wait_for(lambda: units_out(tmp_path / NAME))
         interrupted(one, signal.SIGINT)
     at_peace(tmp_path / NAME)
@@ -132,7 +132,7 @@ def test_during_the_short_reading(tmp_path: Path) -> None:
 
 def test_while_the_fleet_starts(tmp_path: Path) -> None:
     """While scheduler and worker process are coming up."""
-    with running(*LINE, cwd=tmp_path) as one:
+    with running(*line(), cwd=tmp_path) as one:
         one.says("starting 2 cores")
         interrupted(one, signal.SIGTERM)
     at_peace(tmp_path / NAME)
@@ -142,7 +142,7 @@ def test_while_the_fleet_starts(tmp_path: Path) -> None:
 def test_while_counting(number: signal.Signals, tmp_path: Path) -> None:
     """What the cores have is handed back and accepted, and the same line ends with the published table."""
     ledger = tmp_path / NAME
-    with running(*LINE, cwd=tmp_path) as one:
+    with running(*line(), cwd=tmp_path) as one:
         wait_for(lambda: [w for w in one.workers() if connected(w)] and units_out(ledger))
         time.sleep(0.3)
         before = tallies(ledger)
@@ -152,7 +152,7 @@ def test_while_counting(number: signal.Signals, tmp_path: Path) -> None:
     kept = tallies(ledger)
     assert len(kept) > len(before) and kept[: len(before)] == before
     if number == signal.SIGINT:
-        with running(*LINE, cwd=tmp_path) as one:
+        with running(*line(), cwd=tmp_path) as one:
             assert one.wait() == 0
         assert tallies(ledger)[: len(kept)] == kept
         finished(ledger)
@@ -160,7 +160,7 @@ def test_while_counting(number: signal.Signals, tmp_path: Path) -> None:
 
 def test_an_impatient_user(tmp_path: Path) -> None:
     """Ctrl-C twice, and again on the way out: the same line, the same status, and the ledger in order."""
-    with running(*LINE, cwd=tmp_path) as one:
+    with running(*line(), cwd=tmp_path) as one:
         wait_for(lambda: [w for w in one.workers() if connected(w)] and units_out(tmp_path / NAME))
         one.process.send_signal(signal.SIGINT)
         time.sleep(0.02)

@@ -19,10 +19,8 @@ from fleetcount.ledger.access import open_store
 from fleetcount.ledger.states import State
 from fleetcount.series.definition import define
 from fleetcount.trust import published
-from tests.fleet.program import Running, query, running, tallies, units_out, wait_for
+from tests.fleet.program import Running, few_seconds, line, query, running, tallies, units_out, wait_for
 
-TOP = 23
-LINE = ("count", "square", "walk", "--to", str(TOP), "--cores", "2")
 NAME = "fleetcount.sqlite"
 FEW, MANY = 5, 20
 
@@ -30,7 +28,7 @@ FEW, MANY = 5, 20
 def published_walks() -> dict[int, int]:
     """Self-avoiding walks of the square lattice as published (OEIS A001411)."""
     (table,) = [table for table in published.tables() if table.id == "walks-square"]
-    return {n: count for n, count in table.terms().items() if n <= TOP}
+    return {n: count for n, count in table.terms().items() if n <= few_seconds()}
 
 
 def finished(ledger: Path) -> None:
@@ -44,14 +42,16 @@ def finished(ledger: Path) -> None:
             settled = states[State.COUNTED].units + states[State.DIVIDED].units
             assert merged.complete and merged.tallies == settled
         reached = [tables.reach(row) for row in store.readings(series.digest) if row.finished]
-        assert sorted(set(reached)) == sorted(reached) and reached[-1] == TOP, "a reading was begun twice"
+        assert sorted(set(reached)) == sorted(reached) and reached[-1] == few_seconds(), (
+            "a reading was begun twice"
+        )
 
 
 @contextlib.contextmanager
 def marked(folder: Path) -> Iterator[tuple[Running, str]]:
     """The line under test, running, with a mark by which its processes can be found whoever adopts them."""
     mark = uuid.uuid4().hex
-    with running(*LINE, cwd=folder, env={"TEST_MARK": mark}) as one:
+    with running(*line(), cwd=folder, env={"TEST_MARK": mark}) as one:
         yield one, mark
 
 

@@ -208,7 +208,7 @@ def _run(search: Slices, clock: Clock) -> Word:
             return word
         if word is Word.TIME_UP:
             allowance = search.seconds * (1 + CLIMB_SHARE)
-            for _ in search.climb():
+            for _ in search.climb(CLIMB_SHARE / 2):
                 if search.seconds > allowance or clock.word() is Word.STOP_NOW:
                     break
             return clock.word()

@@ -71,15 +71,41 @@ class Slices:
         self.done = done and self._reg(FLOOR) == self.base
         return done
 
-    def climb(self) -> Iterator[None]:
-        """Finish the deepest open subtrees first, slice by slice, until the caller has had enough or all is done."""
-        self._stack.reg[FLOOR] = self._reg(DEPTH)
-        while not self.done:
-            while not self.slice():
-                yield
+    def climb(self, share: float) -> Iterator[None]:
+        """Finish the deepest open subtrees, slice by slice, so that only siblings near the prefix are left.
+
+        Args:
+            share: of the nodes visited so far; how many more that may take, by the looks of it.
+        """
+        floor = self._floor_within(share)
+        if floor > self._reg(DEPTH):
+            return
+        self._stack.reg[FLOOR] = floor
+        self._slice = min(self.most, max(LEAST_SLICE, min(self._slice, int(share * self.nodes / 4))))
+        while not self.slice():
             yield
-            if not self.done:  # the next call leaves the exhausted prefix and goes on beside it
-                self._stack.reg[FLOOR] -= 1
+
+    def _floor_within(self, share: float) -> int:
+        """The least depth below which no more than that share of what is done is still open.
+
+        As if every subtree were as large as its siblings.
+        """
+        done, part = 0.0, 1.0
+        left: list[float] = []
+        deepest = self._reg(DEPTH)
+        for depth, ways in enumerate(self._open(), self.base):
+            waiting, tried = len(ways), self._tried(depth)
+            all_ways = max(waiting + tried, 1)
+            left.append(part * waiting / all_ways)
+            done += part * (tried - (depth < deepest)) / all_ways
+            part /= all_ways
+        floor, more = deepest + 1, 0.0
+        for depth in range(deepest, self.base - 1, -1):
+            more += left[depth - self.base]
+            if more > share * done:
+                break
+            floor = depth
+        return floor
 
     def rest(self) -> Iterator[tuple[tuple[int, ...], int]]:
         """The prefixes not seen yet, each with its images under the symmetries that keep this search's own prefix.
@@ -88,16 +114,32 @@ class Slices:
         """
         if self.done:
             return
-        stack, last = self._stack, self._reg(DEPTH)
-        path = [*self.arms, *(int(stack.arm[d]) - 1 for d in range(self.base, last))]
-        for depth in range(self.base, last + 1):
-            for arm in range(int(stack.arm[depth]), self._columns()):
-                times = self._images(depth, arm)
-                if times and self._can_go(path, depth, arm):
-                    factor = times * int(stack.weight[depth])
-                    self._leave_out(depth + 1, factor)
-                    yield (*path[:depth], arm), factor
+        path = self._path()
+        for depth, ways in enumerate(self._open(), self.base):
+            for arm, times in ways:
+                factor = times * int(self._stack.weight[depth])
+                self._leave_out(depth + 1, factor)
+                yield (*path[:depth], arm), factor
         self.done = True
+
+    def _path(self) -> list[int]:
+        """The arms that lead to where the search stands."""
+        return [*self.arms, *(int(self._stack.arm[d]) - 1 for d in range(self.base, self._reg(DEPTH)))]
+
+    def _open(self) -> list[list[tuple[int, int]]]:
+        """For each depth from the base on the arms not tried yet, each with its images."""
+        depths = range(self.base, self._reg(DEPTH) + 1)
+        return [self._ways(depth, int(self._stack.arm[depth]), self._columns()) for depth in depths]
+
+    def _tried(self, depth: int) -> int:
+        """How many arms were tried at a depth, that of the path included."""
+        return len(self._ways(depth, 0, int(self._stack.arm[depth])))
+
+    def _ways(self, depth: int, first: int, last: int) -> list[tuple[int, int]]:
+        """The possible arms from `first` up to before `last`, each with its images."""
+        path = self._path()
+        arms = ((arm, self._images(depth, arm)) for arm in range(first, last))
+        return [(arm, times) for arm, times in arms if times and self._can_go(path, depth, arm)]
 
     def tally(self) -> Tally:
         """The sums so far."""
