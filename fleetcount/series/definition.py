@@ -157,7 +157,7 @@ def from_canonical(form: Mapping[str, Any], written: Mapping[str, Any]) -> Serie
         lattice = _lattice(form["lattice"], name, names, form.get("up"))
         object_name, version = form["object"]
         if OBJECTS[object_name].version != version:
-            raise SeriesError(f"the object {object_name} is of version {version}, not known here")
+            raise SeriesError(f"the object {object_name} is of version {version}, not known here", where=name)
         end = form.get("end")
         series = Series(
             lattice,
@@ -174,7 +174,7 @@ def from_canonical(form: Mapping[str, Any], written: Mapping[str, Any]) -> Serie
         unknown = {*(s.name for s in series.statistics), *series.moments} - known
         if unknown:
             raise SeriesError(f"{min(unknown)} is not known here", where=name)
-    except (KeyError, TypeError, ValueError) as error:
+    except (ArithmeticError, IndexError, KeyError, TypeError, ValueError) as error:
         raise SeriesError("not the canonical form of a series", where=name) from error
     if series.canonical() != form:
         raise InternalError("a canonical form does not give itself back", where=name)

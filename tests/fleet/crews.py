@@ -19,7 +19,8 @@ from fleetcount.ledger.states import State
 from fleetcount.ledger.store import Lease, Store
 from fleetcount.methods.face import Forecast
 from fleetcount.series import canonical
-from fleetcount.series.definition import Series, define
+from fleetcount.series.defining import define
+from fleetcount.series.definition import Series
 
 SQUARE_WALKS = [1, 4, 12, 36, 100, 284, 780, 2172, 5916, 16268, 44100]
 """Self-avoiding walks of the square lattice, OEIS A001411."""

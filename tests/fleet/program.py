@@ -19,7 +19,7 @@ import psutil
 
 from fleetcount.lattice.catalogue import find
 from fleetcount.methods import registry
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 
 PROGRAM = (sys.executable, "-c", "from fleetcount.cli.main import run; run()")
 ROOT = Path(__file__).parents[2]

@@ -17,7 +17,7 @@ from fleetcount.lattice.catalogue import find
 from fleetcount.ledger import tables
 from fleetcount.ledger.access import open_store
 from fleetcount.ledger.states import State
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from fleetcount.trust import published
 from tests.fleet.program import Running, few_seconds, line, query, running, tallies, units_out, wait_for
 

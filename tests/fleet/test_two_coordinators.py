@@ -18,7 +18,7 @@ from fleetcount.ledger import tables
 from fleetcount.ledger.access import open_store
 from fleetcount.ledger.states import State
 from fleetcount.ledger.store import Share
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from tests.fleet.program import Running, few_seconds, line, query, run, running, units_out, wait_for
 from tests.fleet.test_kills import NAME, connected, finished, published_walks
 

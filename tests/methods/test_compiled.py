@@ -17,14 +17,14 @@ from fleetcount.errors import FleetcountError
 from fleetcount.lattice import catalogue
 from fleetcount.methods import compiled
 from fleetcount.methods.direct.ground import WIDTHS, kernel_of
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 
 COUNT = """
 import json
 from fleetcount.lattice import catalogue
 from fleetcount.methods import compiled
 from fleetcount.methods.direct.method import DirectMethod, Endless
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 
 series = define(catalogue.find("ladder"), "polygon")
 counts = DirectMethod().count(series, range(9), "0:", Endless()).explored.counts()

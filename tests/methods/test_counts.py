@@ -9,7 +9,7 @@ from fleetcount.lattice import catalogue
 from fleetcount.methods.direct import twin
 from fleetcount.methods.direct.keys import Prefix
 from fleetcount.methods.direct.method import DirectMethod, Endless
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from fleetcount.series.tally import Tally
 from tests.methods import lattices, plain
 from tests.methods.splitting import METHOD, table

@@ -21,7 +21,7 @@ from fleetcount.methods.direct.ground import ground
 from fleetcount.methods.direct.kernels import NODES, VISITED
 from fleetcount.methods.direct.method import Endless
 from fleetcount.methods.direct.search import Search
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from tests.methods.splitting import METHOD, slices_of
 from tests.strategies import small_lattices
 

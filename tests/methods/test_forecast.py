@@ -20,7 +20,8 @@ from fleetcount.methods.direct.method import DirectMethod, Endless
 from fleetcount.methods.direct.pieces import state_after
 from fleetcount.methods.direct.symmetry_states import states_of
 from fleetcount.methods.face import Child, Word
-from fleetcount.series.definition import Series, define
+from fleetcount.series.defining import define
+from fleetcount.series.definition import Series
 from tests.methods.splitting import METHOD, After, slices_of
 from tests.strategies import small_lattices
 

@@ -11,7 +11,7 @@ from fleetcount.lattice import catalogue
 from fleetcount.methods.direct import keys
 from fleetcount.methods.direct.keys import Prefix
 from fleetcount.methods.direct.method import Endless
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from tests.methods.splitting import METHOD
 
 prefixes = st.builds(

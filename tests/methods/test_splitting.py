@@ -15,7 +15,8 @@ from fleetcount.methods.direct import keys, twin
 from fleetcount.methods.direct.method import DirectMethod, Endless
 from fleetcount.methods.direct.search import Search
 from fleetcount.methods.face import Counted, Word
-from fleetcount.series.definition import Series, define
+from fleetcount.series.defining import define
+from fleetcount.series.definition import Series
 from fleetcount.series.tally import Tally
 from tests.methods.splitting import METHOD, After, Fickle, in_pieces, keys_of, slices_of, whole
 from tests.strategies import small_lattices

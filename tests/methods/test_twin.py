@@ -18,7 +18,8 @@ from fleetcount.methods.direct.keys import Prefix
 from fleetcount.methods.direct.method import DirectMethod, Endless
 from fleetcount.methods.direct.search import Search
 from fleetcount.methods.direct.symmetry_states import without_symmetry
-from fleetcount.series.definition import Series, define
+from fleetcount.series.defining import define
+from fleetcount.series.definition import Series
 from fleetcount.series.tally import Tally
 from tests.methods import plain
 from tests.methods.splitting import METHOD, table, whole

@@ -15,7 +15,8 @@ from fleetcount.lattice import catalogue, definition
 from fleetcount.lattice.model import Lattice
 from fleetcount.lattice.symmetry import all_alike
 from fleetcount.series import canonical
-from fleetcount.series.definition import Series, define, from_canonical
+from fleetcount.series.defining import define
+from fleetcount.series.definition import Series, from_canonical
 from tests.series.digests import DIGESTS
 from tests.strategies import small_lattices
 

@@ -11,7 +11,8 @@ import pytest
 
 from fleetcount.errors import InputError
 from fleetcount.lattice import catalogue
-from fleetcount.series.definition import Series, define
+from fleetcount.series.defining import define
+from fleetcount.series.definition import Series
 from fleetcount.series.table import CoefficientTable
 from fleetcount.series.tally import Tally
 
