@@ -10,7 +10,7 @@ from types import SimpleNamespace
 
 import pytest
 
-from fleetcount.methods.direct import search
+from fleetcount.methods.direct import slices
 from fleetcount.methods.direct.method import DirectMethod, Endless
 from fleetcount.methods.face import Child, Counted, Word
 from fleetcount.series.definition import Series
@@ -45,15 +45,15 @@ class After:
 def slices_of(nodes: int) -> Iterator[None]:
     """Slices of about so many nodes, each of one second by their clock: nothing depends on how fast it goes."""
     with pytest.MonkeyPatch.context() as patch:
-        for name in ("FIRST_SLICE", "LEAST_SLICE", "SLICE_NODES"):
-            patch.setattr(search, name, nodes)
-        patch.setattr(search, "time", SimpleNamespace(thread_time=itertools.count().__next__))
+        for name in ("FIRST_SLICE", "LEAST_SLICE"):
+            patch.setattr(slices, name, nodes)
+        patch.setattr(slices, "time", SimpleNamespace(thread_time=itertools.count().__next__))
         yield
 
 
 def whole(series: Series, top: int) -> Tally:
     """The weighted sum over the roots, each counted in one piece."""
-    sums = Tally()
+    sums = Tally(series.width)
     for root in METHOD.roots(series, range(top + 1)):
         counted = METHOD.count(series, range(top + 1), root.key, Endless())
         assert not counted.children
@@ -74,7 +74,7 @@ def in_pieces(series: Series, top: int, random: Random, pieces: int = 60, patien
     """
     lengths = range(top + 1)
     todo: list[tuple[Child, int]] = [(root, root.factor) for root in METHOD.roots(series, lengths)]
-    sums, taken, seen = Tally(), 0, {root.key for root, _ in todo}
+    sums, taken, seen = Tally(series.width), 0, {root.key for root, _ in todo}
     while todo:
         unit, weight = todo.pop(random.randrange(len(todo)))
         taken += 1

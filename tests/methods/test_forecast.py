@@ -64,7 +64,7 @@ def test_children_share_what_is_expected_of_their_parent(lattice: Lattice, kind:
 def _order(series: Series, key: str) -> int:
     """Symmetries that keep a prefix."""
     prefix = keys.parse(key)
-    states = states_of(series.lattice, prefix.start, prefix.least)
+    states = states_of(series, prefix.start, prefix.least)
     return states.orders[state_after(series, states, prefix)[0]]
 
 

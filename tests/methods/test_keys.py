@@ -15,7 +15,11 @@ from fleetcount.series.defining import define
 from tests.methods.splitting import METHOD
 
 prefixes = st.builds(
-    Prefix, st.integers(0, 999_999), st.booleans(), st.lists(st.integers(0, 999), max_size=60).map(tuple)
+    Prefix,
+    st.integers(0, 999_999),
+    st.booleans(),
+    st.lists(st.integers(0, 999), max_size=60).map(tuple),
+    st.lists(st.integers(-999_999_999, 999_999_999), max_size=5).map(tuple),
 )
 
 
@@ -25,7 +29,7 @@ def test_a_key_gives_its_prefix_back(prefix: Prefix) -> None:
     assert keys.parse(prefix.key()) == prefix
 
 
-@given(st.one_of(st.text(max_size=30), st.from_regex(r"\A[0-9:./least-]{0,12}\Z")))
+@given(st.one_of(st.text(max_size=30), st.from_regex(r"\A[0-9:./least@,-]{0,12}\Z")))
 def test_a_unit_has_one_key(text: str) -> None:
     """Whatever is accepted is the one spelling of its prefix; all else is refused in one line."""
     try:
@@ -49,6 +53,12 @@ def test_a_unit_has_one_key(text: str) -> None:
         " 0:1",
         "0:1\n",
         "0/most:1",
+        "0@:1",
+        "0@01:1",
+        "0@-0:1",
+        "0@1,:1",
+        "0/least@1:1",
+        "0@1000000000:1",
         "٣:1",
         "0:" + "1" * 99,
     ),

@@ -97,7 +97,8 @@ def up_to(tally: Tally, top: int) -> Tally:
 def test_a_known_mistake_is_found(monkeypatch: pytest.MonkeyPatch) -> None:
     """Taking sites further down the path for obstacles to what is handed back shows in these tests."""
 
-    def only_the_marks(search: Search, there: int, depth: int) -> bool:
+    def only_the_marks(search: Search, _: list[int], depth: int, arm: int) -> bool:
+        there = search.ground.patch.next[int(search._own.path[depth]), arm]
         return bool(search._marks[there] >= 0)
 
     monkeypatch.setattr(Search, "_can_go", only_the_marks)

@@ -117,7 +117,7 @@ def layers(lattice: Lattice, form: forms.Form, patch: Patch) -> Array:
     """Values of a form on a patch in units of its least spacing, the least being 0: int32 [sites + 1]."""
     lowest = Wall(form, min(forms.value(form, lattice, site) for site in range(len(lattice.sites))))
     found = excesses(lattice, lowest, patch.kind, patch.cells)
-    found = found - found[1:].min()
+    found -= found[1:].min()
     found[0] = 0
     return found.astype(np.int32)
 
