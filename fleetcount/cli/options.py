@@ -67,7 +67,7 @@ def give(table: CoefficientTable, *, json: bool, csv: bool, plain: bool) -> None
     """
     from fleetcount.trust.published import compare
 
-    agreement = None if table.final is None else compare(table.series, table.counts(), table.final)
+    agreement = compare(table)
     line = agreement.line() if agreement else "no published values to compare with are at hand"
     if json:
         typer.echo(table.json())

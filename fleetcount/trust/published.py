@@ -1,22 +1,23 @@
 """Published values: read from the data files, and compared with what was counted.
 
 The files under `data/` hold exact published numbers with their sources; the README beside them describes
-the format. A table is matched to a series by the canonical form of the lattice, never by its name, so that a
-user's own file that describes the square lattice is the square lattice here too.
+the format. Which of them speak about a series is found by `matching`.
 """
 
 from __future__ import annotations
 
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from functools import cache
 from importlib.resources import files
-from typing import Any
+from typing import TYPE_CHECKING, Any, NamedTuple
 
-from fleetcount.errors import InternalError
-from fleetcount.lattice import catalogue
-from fleetcount.series.definition import Series
+from fleetcount.series.tally import Place
+
+if TYPE_CHECKING:
+    from fleetcount.series.table import CoefficientTable
+    from fleetcount.trust.matching import PublishedTerms
 
 TABLE_FILES = ("walks", "polygons", "trails", "metrics", "contacts", "confined", "endpoints")
 """The data files that hold tables; constants and records are of another shape."""
@@ -33,6 +34,7 @@ class PublishedTable:
         values: full values by index, or by index and statistic; a published fraction is multiplied out.
         source: where the numbers come from.
         sequence: number in the On-Line Encyclopedia of Integer Sequences, or "".
+        published: somebody else printed the numbers; else they were enumerated for the file.
     """
 
     id: str
@@ -40,9 +42,10 @@ class PublishedTable:
     object: str
     quantity: str
     definition: str
-    values: Mapping[tuple[int, ...], int]
+    values: Mapping[Place, int]
     source: str
     sequence: str
+    published: bool
 
     def terms(self) -> dict[int, int]:
         """Full values by index; the statistic of a two-index table is summed out."""
@@ -52,124 +55,121 @@ class PublishedTable:
         return sums
 
 
-@dataclass(frozen=True)
-class PublishedTerms:
-    """A table that speaks about a series, in the normalisation of the series per start site or per cell.
+class Reached(NamedTuple):
+    """The greatest length to which every term of a table agrees; the table's id and citation, whether it is published."""
 
-    Attributes:
-        terms: published value by length; lengths that the table leaves out are left out.
-        cite: sequence number and source in a few words.
-    """
-
-    table: PublishedTable
-    terms: Mapping[int, int]
+    n: int
+    table: str
     cite: str
+    published: bool
 
 
 @dataclass(frozen=True)
 class Agreement:
-    """How the counts of a series stand to the published ones.
+    """How the numbers of a series stand to the published ones.
 
     Attributes:
-        reached: for each table, the greatest length to which every published term agrees, and its citation.
+        reached: for each table with which the first terms agree, how far.
         disagreement: one line on the first length at which they differ, or None.
     """
 
-    reached: tuple[tuple[int, str], ...]
+    reached: tuple[Reached, ...]
     disagreement: str | None = None
 
     def line(self) -> str:
         """One line for people."""
         if self.disagreement is not None:
             return self.disagreement
-        parts = (f"to n={n} ({cite})" for n, cite in sorted(self.reached, key=lambda part: -part[0]))
-        return "agrees with published values " + ", ".join(parts)
+        kinds = (("published values", True), ("tables enumerated for this program", False))
+        parts = ((words, self._parts(published)) for words, published in kinds)
+        return "agrees with " + "; and with ".join(f"{words} {told}" for words, told in parts if told)
+
+    def _parts(self, published: bool) -> str:
+        chosen = sorted((r for r in self.reached if r.published == published), key=lambda r: -r.n)
+        return ", ".join(f"to n={r.n} ({r.cite})" for r in chosen)
 
 
 @cache
 def tables() -> tuple[PublishedTable, ...]:
     """All published tables, in the order of the files."""
-    return tuple(table for name in TABLE_FILES for table in _tables_of(f"{name}.toml").values())
+    return tuple(table for name in TABLE_FILES for table in tables_of(f"{name}.toml").values())
 
 
-def for_series(series: Series) -> list[PublishedTerms]:
-    """The published plain counts of that object on that lattice, per start site or per cell.
+def compare(table: CoefficientTable) -> Agreement | None:
+    """Compare the final terms of a table with all published ones; None where there are none.
 
-    On all lattices that are matched the sites are alike, so the start of a walk makes no difference.
+    Counts, joint counts and moments are compared. Where a table is refined, tables that are not so are held
+    against its sums.
     """
-    form = series.canonical()
-    matching = _document("matching.toml")
-    found = []
-    for match in matching["match"]:
-        if match["object"] != series.object or any(form[key] for key in ("statistics", "moments", "walls")):
-            continue
-        table = _tables_of(match["file"])[match["table"]]
-        lattice = match.get("lattice") or matching["lattices"][table.lattice]
-        if catalogue.find(lattice).canonical() == form["lattice"]:
-            cite = f"{table.sequence}: {match['cite']}" if table.sequence else match["cite"]
-            found.append(PublishedTerms(table, _normalised(table, match), cite))
-    return found
+    from fleetcount.trust.matching import for_series
 
-
-def compare(series: Series, counts: Mapping[int, int], final: int) -> Agreement | None:
-    """Compare the final counts of a series, by length, with all published ones; None where there are none.
-
-    Args:
-        counts: as the coefficient table has them, before division by the series' divisor.
-        final: greatest length up to which they are final; later ones are left out.
-    """
-    reached: list[tuple[int, str]] = []
+    reached: list[Reached] = []
     differing: list[tuple[int, str]] = []
-    for published in for_series(series):
-        common = sorted(n for n in published.terms if n in counts and n <= final)
-        wrong = [n for n in common if counts[n] != series.divisor * published.terms[n]]
-        agreeing = [n for n in common if not wrong or n < wrong[0]]
-        if agreeing:
-            reached.append((agreeing[-1], published.cite))
-        if wrong:
-            differing.append((wrong[0], _disagreement(series, published, counts[wrong[0]], wrong[0])))
+    for published in for_series(table.series):
+        agrees_to, wrong = _compared(table, published)
+        if agrees_to is not None:
+            of = published.table
+            reached.append(Reached(agrees_to, of.id, published.cite, of.published))
+        if wrong is not None:
+            differing.append(wrong)
     if not reached and not differing:
         return None
     return Agreement(tuple(reached), min(differing)[1] if differing else None)
 
 
-def _disagreement(series: Series, published: PublishedTerms, count: int, n: int) -> str:
-    return (
-        f"{series.title()}: the count of length {n} is {count}, "
-        f"published is {series.divisor * published.terms[n]} ({published.cite})"
-    )
+def _compared(
+    table: CoefficientTable, published: PublishedTerms
+) -> tuple[int | None, tuple[int, str] | None]:
+    """The last length before the first disagreement, and that length with a line on it."""
+    if table.final is None:
+        return None, None
+    counted, terms, agrees_to = published.counted(table.sums), published.terms, None
+    lengths = {place[0] for place in terms}
+    for n in sorted(n for n in lengths if table.least <= n <= table.final):
+        for place in sorted(_places_of(n, terms) | _places_of(n, counted)):
+            count, value = counted.get(place, 0), published.units * terms.get(place, 0)
+            if count != value:
+                what = f"{published.what} of length {n}{published.at(place)}"
+                line = (
+                    f"{table.series.title()}: the {what} is {count}, published is {value} ({published.cite})"
+                )
+                return agrees_to, (n, line)
+        agrees_to = n
+    return agrees_to, None
 
 
-def _normalised(table: PublishedTable, match: Mapping[str, Any]) -> dict[int, int]:
-    terms = {n: match.get("times", 1) * value for n, value in table.terms().items()}
-    if not match.get("rooted", False):
-        return terms
-    if any(value % (2 * n) for n, value in terms.items()):
-        raise InternalError(
-            "closed walks are no multiple of twice their length", where=f"published table {table.id}"
-        )
-    return {n: value // (2 * n) for n, value in terms.items()}
+def _places_of(n: int, values: Mapping[Place, int]) -> set[Place]:
+    return {place for place in values if place[0] == n}
 
 
 @cache
-def _tables_of(file: str) -> dict[str, PublishedTable]:
-    return {entry["id"]: _table(entry) for entry in _document(file)["table"]}
+def tables_of(file: str) -> dict[str, PublishedTable]:
+    """The tables of a data file, by id."""
+    return {entry["id"]: _table(entry) for entry in document(file)["table"]}
 
 
 def _table(entry: Mapping[str, Any]) -> PublishedTable:
+    words = {key: entry[key] for key in ("id", "lattice", "object", "quantity", "definition", "source")}
     times = entry.get("multiplier", 1)
-    values: dict[tuple[int, ...], int] = {}
+    return PublishedTable(
+        **words,
+        values={place: times * int(value) for place, value in _values(entry)},
+        sequence=entry.get("sequence", ""),
+        published=entry["retrieved"] != "own enumeration",
+    )
+
+
+def _values(entry: Mapping[str, Any]) -> Iterator[tuple[Place, int | str]]:
     if "rows" in entry:
         for row in entry["rows"]:
-            values.update({(row["n"], row["first"] + j): times * int(v) for j, v in enumerate(row["values"])})
+            yield from (((row["n"], row["first"] + j), value) for j, value in enumerate(row["values"]))
     else:
         first, step = entry["first"], entry["step"]
-        values.update({(first + i * step,): times * int(v) for i, v in enumerate(entry["values"])})
-    words = {key: entry[key] for key in ("id", "lattice", "object", "quantity", "definition", "source")}
-    return PublishedTable(**words, values=values, sequence=entry.get("sequence", ""))
+        yield from (((first + i * step,), value) for i, value in enumerate(entry["values"]))
 
 
 @cache
-def _document(file: str) -> dict[str, Any]:
+def document(file: str) -> dict[str, Any]:
+    """A data file, parsed."""
     text = files("fleetcount.trust").joinpath("data", file).read_text(encoding="utf-8")
     return tomllib.loads(text)
