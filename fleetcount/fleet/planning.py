@@ -36,6 +36,7 @@ def open_reading(store: Store, lease: Lease, series: Series, method_name: str, t
         lengths=format_lengths(lengths),
         roots=tuple((root.key, root.factor) for root in roots),
         opened=time.time_ns() // 1000,
+        width=series.width,
     )
     store.open_reading(lease, opening.text(), [root.expected for root in roots])
     return Task(series, opening.reading, method.name, opening.lengths)
