@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import os
+from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
 from fleetcount.errors import SeriesError, StoppedError
@@ -17,10 +18,14 @@ if TYPE_CHECKING:
 
 def count(
     lattice: str | os.PathLike[str],
-    object: str,  # noqa: A002 - the field's word
+    object: str | None = None,  # noqa: A002 - the field's word
     *,
-    to: int,
+    to: int | None = None,
     start: str | None = None,
+    end: str | None = None,
+    by: str | Sequence[str] = (),
+    moment: str | Sequence[str] = (),
+    region: str | None = None,
     ledger: str | os.PathLike[str] | Store | None = None,
     cores: int | None = None,
     client: Client | None = None,
@@ -28,10 +33,15 @@ def count(
     """Count a series exactly and return its coefficient table.
 
     Args:
-        lattice: a name from the catalogue, or the path of a lattice file.
-        object: "walk" or "polygon".
-        to: greatest length.
-        start: name of the start site, where the sites of the lattice are not all alike.
+        lattice: a name from the catalogue, or the path of a lattice file; without `object` that of a series file.
+        object: "walk", "polygon", "trail", "closed-trail", "neighbour-avoiding", "bridge" or "trapped".
+        to: greatest length; may be left out where a series file names it.
+        start: a site's name, a cell "0,3" or both "0,3:a"; needed where the sites of the lattice are not all alike
+            and a direction or region is named.
+        end: cell, or cell and site, where walks have to end.
+        by: up to two statistics that refine the count, such as "contacts" or "visits:2".
+        moment: exact sums beside the count, such as "end2".
+        region: "half", "quarter", "orthant", "wedge", "slab:W", "box:A,B,...", "tube:A,...".
         ledger: path or URL of a ledger that keeps the tallies, so that a later call goes on where this one was
             stopped; an open ledger; None: memory only.
         cores: cores of this machine to count on; None: all.
@@ -42,19 +52,27 @@ def count(
         KeyboardInterrupt: interrupted; what was counted so far is in the ledger.
     """
     from fleetcount.fleet.counting import Options, count_series
-    from fleetcount.lattice.catalogue import find
     from fleetcount.ledger.access import open_store
-    from fleetcount.series.defining import define
+    from fleetcount.series.files import asked
 
-    if isinstance(to, bool) or not isinstance(to, int):
+    if to is not None and (isinstance(to, bool) or not isinstance(to, int)):
         raise SeriesError(f"the greatest length is {to!r}", where="to", mend="give a whole number")
-    series = define(find(lattice), object, start)
+    definition = asked(
+        lattice, object, to, start=start, end=end, by=_texts(by), moment=_texts(moment), region=region
+    )
+    if definition.to is None:
+        raise SeriesError("up to which length?", where="to", mend="give a whole number")
+    series = definition.series()
     with contextlib.ExitStack() as stack:
         store: Any = ledger
         if ledger is None or isinstance(ledger, (str, os.PathLike)):
             where = ":memory:" if ledger is None else os.fspath(ledger)
             store = stack.enter_context(open_store(where, create=True))
         try:
-            return count_series(store, series, to, Options(cores=cores, client=client))
+            return count_series(store, series, definition.to, Options(cores=cores, client=client))
         except StoppedError as error:
             raise KeyboardInterrupt(str(error)) from error
+
+
+def _texts(names: str | Sequence[str]) -> Sequence[str]:
+    return (names,) if isinstance(names, str) else names

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import time
+from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
@@ -13,6 +14,7 @@ from fleetcount.errors import InputError, StoppedError
 
 if TYPE_CHECKING:
     from fleetcount.fleet.counting import Options
+    from fleetcount.series.files import WrittenSeries
     from fleetcount.series.table import CoefficientTable
 
 
@@ -23,11 +25,25 @@ def register(app: typer.Typer) -> None:
 
 def count(
     lattice: Annotated[
-        str, typer.Argument(metavar="LATTICE", help="A built-in lattice, or the path of a lattice file.")
+        str,
+        typer.Argument(
+            metavar="LATTICE|SERIES.toml",
+            help="A built-in lattice, or the path of a lattice file; alone, the path of a series file.",
+        ),
     ],
-    object_name: Annotated[str, typer.Argument(metavar="OBJECT", help="What to count: walk, polygon.")],
-    to: Annotated[int, typer.Option("--to", metavar="N", help="Greatest length.")],
+    object_name: options.ObjectName = None,
+    to: Annotated[
+        int | None,
+        typer.Option("--to", metavar="N", help="Greatest length, in steps; of polygons the perimeter."),
+    ] = None,
     start: options.Start = None,
+    end: options.End = None,
+    by: options.By = None,
+    moment: options.Moment = None,
+    region: options.Region = None,
+    save: Annotated[
+        Path | None, typer.Option(metavar="SERIES.toml", help="Write the definition into a series file.")
+    ] = None,
     ledger: options.Ledger = None,
     cores: Annotated[int | None, typer.Option(metavar="K", help="Cores to count on. Default: all.")] = None,
     wait: Annotated[
@@ -44,15 +60,18 @@ def count(
 ) -> None:
     """Count a series up to a length, or go on where an earlier run was stopped.
 
-    Walks are counted as directed from a fixed start; polygons per cell, without root or sense.
+    Walks are counted as directed from a fixed start, one of length 0 included; polygons and closed trails up to
+    translation, that is per cell, without root or sense (on one-way lattices each sense that occurs).
     """
     from fleetcount.fleet.interrupt import Interrupts, StopFlag, ignore
+    from fleetcount.series.files import asked
 
     options.one_form(json=as_json, csv=as_csv, plain=plain)
     if cores is not None and not 1 <= cores <= 1024:
         raise InputError(f"{cores} cores", where="--cores", mend="give a number from 1 to 1024")
     if not 0.001 <= ledger_size <= 1e6:
         raise InputError(f"{ledger_size} GB", where="--ledger-size", mend="give a size from 0.001 to 1000000")
+    definition = asked(lattice, object_name, to, start=start, end=end, by=by, moment=moment, region=region)
     began = time.monotonic()
     stop = StopFlag()
     try:
@@ -65,7 +84,7 @@ def count(
             )
             with Screen(quiet) as screen:
                 how.observer = screen
-                table, location = _counted(lattice, object_name, start, to, ledger, how)
+                table, location = _counted(definition, save, ledger, how)
     except (StoppedError, KeyboardInterrupt) as error:
         ignore()  # the program is on its way out; more of them would only spoil its exit status
         raise error if isinstance(error, StoppedError) else _stopped() from None
@@ -77,14 +96,22 @@ def count(
 
 
 def _counted(
-    lattice: str, object_name: str, start: str | None, to: int, ledger: str | None, how: Options
+    definition: WrittenSeries, save_as: Path | None, ledger: str | None, how: Options
 ) -> tuple[CoefficientTable, str]:
     """The table, and where its tallies are."""
     from fleetcount.fleet.counting import check, count_series
     from fleetcount.ledger.access import open_store
+    from fleetcount.series import files
 
-    series = options.define(lattice, object_name, start)
+    series, to = options.series_of(definition), definition.to
+    if to is None:
+        raise InputError(
+            "up to which length?", where=definition.source or "--to", mend="add --to N, or to = N in the file"
+        )
     check(series, to)
+    if save_as is not None:
+        files.save(definition, save_as)
+        how.observer.note(f"the definition is in {save_as}")
     with open_store(ledger, create=True) as store:
         for notice in store.notices:
             how.observer.note(notice)

@@ -24,13 +24,16 @@ def table(
     lattice: Annotated[
         str,
         typer.Argument(
-            metavar="LATTICE|DIGEST", help="A lattice as in count, or the beginning of a series' digest."
+            metavar="LATTICE|SERIES.toml|DIGEST",
+            help="A lattice or series file as in count, or the beginning of a series' digest.",
         ),
     ],
-    object_name: Annotated[
-        str | None, typer.Argument(metavar="[OBJECT]", help="As in count; left out with a digest.")
-    ] = None,
+    object_name: options.ObjectName = None,
     start: options.Start = None,
+    end: options.End = None,
+    by: options.By = None,
+    moment: options.Moment = None,
+    region: options.Region = None,
     to: Annotated[int | None, typer.Option("--to", metavar="N", help="Only lengths up to this one.")] = None,
     so_far: Annotated[
         bool, typer.Option("--so-far", help="Add the partial sums of the open reading, marked.")
@@ -40,24 +43,37 @@ def table(
     as_json: options.AsJson = False,
     as_csv: options.AsCsv = False,
     plain: options.Plain = False,
+    polynomials: Annotated[
+        bool,
+        typer.Option(
+            "--polynomials", help="Each length as a polynomial in named variables, for computer algebra."
+        ),
+    ] = False,
 ) -> None:
     """Print the coefficient table of a series, every record of its chain checked."""
     from fleetcount.ledger import tables
     from fleetcount.ledger.access import open_store
+    from fleetcount.series.files import asked, is_file
 
-    options.one_form(json=as_json, csv=as_csv, plain=plain)
-    if so_far and (as_csv or plain or to is not None):
+    options.one_form(json=as_json, csv=as_csv, plain=plain, polynomials=polynomials)
+    if so_far and (as_csv or plain or polynomials or to is not None):
         raise InputError(
             "--so-far goes with the text and with --json, whole", mend="leave the other option out"
         )
-    defined = options.define(lattice, object_name, start) if object_name is not None else None
+    options_given = start or end or by or moment or region
+    defined = None
+    if object_name is not None or is_file(lattice) or options_given:
+        definition = asked(
+            lattice, object_name, to, start=start, end=end, by=by, moment=moment, region=region
+        )
+        defined = options.series_of(definition)
     with open_store(ledger, read_only=True) as store:
         series = _series(store, lattice, defined)
         view = tables.view(store, series, so_far)
         found = view.table if to is None else view.table.cut(to)
         if per_site:
             found = found.per_site()
-        options.give(found, json=as_json, csv=as_csv, plain=plain)
+        options.give(found, json=as_json, csv=as_csv, plain=plain, polynomials=polynomials)
         if not as_json:
             for reading in view.open:
                 options.say(_open_line(reading))
@@ -79,7 +95,7 @@ def _series(store: Store, beginning: str, defined: Series | None) -> Series:
     if len(beginning) < tables.LEAST_BEGINNING or set(beginning.lower()) - set("0123456789abcdef"):
         raise InputError(
             f"{beginning} alone is no series",
-            mend="give lattice and object, or at least four digits of a series' digest",
+            mend="give lattice and object, a series file, or at least four digits of a series' digest",
         )
     return series_of(tables.find_series(store, beginning))
 

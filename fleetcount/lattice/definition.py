@@ -2,21 +2,14 @@
 
 from __future__ import annotations
 
-import re
-import tomllib
 from collections.abc import Mapping
 from dataclasses import replace
 from fractions import Fraction
 from pathlib import Path
-from typing import Any
 
-from fleetcount.errors import InputError, LatticeError
-from fleetcount.lattice import checks
+from fleetcount.lattice import checks, files
 from fleetcount.lattice.entries import Entry
 from fleetcount.lattice.model import Arc, Lattice, Site
-
-GREATEST_FILE = 8_000_000
-"""Bytes; the largest cell that the checks accept fits in about half of it."""
 
 _KEYS = frozenset(
     ("name", "title", "dimension", "periods", "metric", "metric_is", "up", "sites", "edges", "arcs")
@@ -31,22 +24,7 @@ def load(path: str | Path) -> Lattice:
         LatticeError: it is not a valid definition.
     """
     path = Path(path)
-    mend = "give the path of a lattice definition in TOML"
-    try:
-        if path.is_dir():
-            raise InputError("is a folder, not a lattice file", where=str(path), mend=mend)
-        if not path.exists():
-            raise InputError("no such lattice file", where=str(path), mend=mend)
-        if not path.is_file() or path.stat().st_size > GREATEST_FILE:
-            what = f"is no plain file of at most {GREATEST_FILE // 1_000_000} MB"
-            raise InputError(what, where=str(path), mend=mend)
-        text = path.read_bytes().decode("utf-8")
-    except UnicodeDecodeError:
-        raise LatticeError("is not text in UTF-8", where=str(path), mend=mend) from None
-    except (OSError, ValueError) as error:
-        reason = getattr(error, "strerror", None) or str(error)
-        raise InputError(f"cannot be read: {reason}", where=repr(str(path)), mend=mend) from None
-    return parse(text, str(path))
+    return parse(files.read_text(path, "lattice"), str(path))
 
 
 def parse(text: str, source: str) -> Lattice:
@@ -55,7 +33,7 @@ def parse(text: str, source: str) -> Lattice:
     Raises:
         LatticeError: naming source, entry and mend.
     """
-    top = Entry(source, "", _document(text, source))
+    top = Entry(source, "", files.document(text, source))
     top.only(_KEYS)
     dimension = top.integer("dimension", 1, checks.GREATEST_DIMENSION)
     periods = top.integer("periods", 1, dimension, default=dimension)
@@ -76,21 +54,6 @@ def parse(text: str, source: str) -> Lattice:
         source=source,
     )
     return replace(lattice, warnings=checks.check(lattice))
-
-
-def _document(text: str, source: str) -> Mapping[str, Any]:
-    try:
-        return tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
-        found = re.search(r"^(.*) \(at (line \d+, column \d+|end of document)\)$", str(error), re.DOTALL)
-        what, place = found.groups() if found else (str(error), "")
-        if place == "end of document":
-            place = f"line {text.count(chr(10)) + 1}"
-        where = f"{source}, {place}" if place else source
-        raise LatticeError(f"broken TOML: {what}", where=where, mend="correct the file there") from None
-    except (RecursionError, ValueError):
-        mend = "write a plain definition with small numbers"
-        raise LatticeError("nested too deeply, or a number too long", where=source, mend=mend) from None
 
 
 def _metric(top: Entry, dimension: int) -> tuple[tuple[Fraction, ...], ...]:

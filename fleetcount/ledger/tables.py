@@ -11,7 +11,7 @@ from fleetcount.methods import registry
 from fleetcount.series.definition import Series
 from fleetcount.series.lengths import parse_lengths
 from fleetcount.series.table import CoefficientTable
-from fleetcount.series.tally import Tally
+from fleetcount.series.tally import Place, Tally
 
 LEAST_BEGINNING = 4
 
@@ -65,12 +65,12 @@ def view(store: Store, series: Series, so_far: bool = False) -> View:
         widest = max(unfinished, key=reach)
         found = _merge(store, series, widest, check=True)
         head = found.head
-        partial = _partial(series, found) if so_far else None
+        partial = _assembled(series, widest, found, partial=True) if so_far else None
     disputed = [key for found in merged.values() for key in found.disputed]
     if disputed:
         raise TrustError("two answers for this unit do not agree", where=f"unit {disputed[0]}")
     final = reach(done[0]) if done else None
-    sums = tables[0][1] if tables else Tally()
+    sums = tables[0][1] if tables else Tally(series.width)
     table = CoefficientTable(
         series, final, sums, series.divisor, not unfinished and bool(done), head, partial
     )
@@ -85,9 +85,9 @@ def _merge(store: Store, series: Series, row: ReadingRow, check: bool) -> Merged
     return found
 
 
-def _assembled(series: Series, row: ReadingRow, found: Merged) -> Tally:
+def _assembled(series: Series, row: ReadingRow, found: Merged, partial: bool = False) -> Tally:
     top = reach(row)
-    table = registry.get(row.method).assemble(series, found.table)
+    table = registry.get(row.method).assemble(series, found.table, partial)
     beyond = [place for place in table.rows if place[0] > top]
     if beyond:
         raise TrustError(
@@ -96,33 +96,32 @@ def _assembled(series: Series, row: ReadingRow, found: Merged) -> Tally:
     return table
 
 
-def _partial(series: Series, found: Merged) -> Tally:
-    """Partial sums, each a lower bound of its term; of closed objects in whole ones."""
-    if not series.rule.closed:
-        return found.table
-    table = Tally()
-    for place, (closed,) in found.table.sorted_rows():
-        ways = place[0] if series.lattice.one_way else 2 * place[0]
-        table.rows[place] = (closed // ways,)
-    return table
-
-
 def _compare(series: Series, tables: Sequence[tuple[ReadingRow, Tally]]) -> None:
-    """Each reading against the widest one, on the lengths that both cover."""
+    """Each reading against the widest one, row by row, on the lengths that both cover."""
     for row, table in tables[1:]:
         widest, reference = tables[0]
-        for n in range(reach(row) + 1):
-            ours, theirs = (_row(t, n) for t in (reference, table))
-            if ours != theirs:
-                raise TrustError(
-                    f"readings {widest.reading[:8]} and {row.reading[:8]} disagree at length {n}: {ours} and {theirs}",
-                    where=series.title(),
-                    mend="one of them is wrong; count the series once more to see which",
-                )
+        common = reach(row)
+        ours = {place: values for place, values in reference.sorted_rows() if place[0] <= common}
+        theirs = dict(table.sorted_rows())
+        differing = [place for place in ours.keys() | theirs.keys() if ours.get(place) != theirs.get(place)]
+        if differing:
+            first = min(differing)
+            raise TrustError(
+                f"readings {widest.reading[:8]} and {row.reading[:8]} disagree at {_named(series, first)}: "
+                f"{_shown(ours.get(first))} and {_shown(theirs.get(first))}",
+                where=series.title(),
+                mend="one of them is wrong; count the series once more to see which",
+            )
 
 
-def _row(table: Tally, n: int) -> list[list[str]]:
-    return [row for row in table.canonical() if row[0] == str(n)]
+def _named(series: Series, place: Place) -> str:
+    """`length 4, contacts 1`."""
+    names = ("length", *series.columns[1 : len(place)])
+    return ", ".join(f"{name} {value}" for name, value in zip(names, place, strict=True))
+
+
+def _shown(values: tuple[int, ...] | None) -> str:
+    return " ".join(map(str, values)) if values else "0"
 
 
 def find_series(store: Store, beginning: str) -> SeriesRow:

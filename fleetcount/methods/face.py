@@ -105,8 +105,13 @@ class Method(Protocol):
     ) -> Counted:
         """Count a unit until it is done or the clock says otherwise, leaving out the subtrees in `without`."""
 
-    def assemble(self, series: Series, sums: Tally) -> Tally:
-        """The coefficient table from the weighted sum of all explored tallies."""
+    def assemble(self, series: Series, sums: Tally, partial: bool = False) -> Tally:
+        """The coefficient table from the weighted sum of all explored tallies.
+
+        Args:
+            partial: they are not all there. Then each number is a lower bound, rounded down where complete sums
+                leave no remainder.
+        """
 
     def forecast(self, series: Series, lengths: Sequence[int]) -> Forecast:
         """The expected cost."""

@@ -4,16 +4,20 @@ from __future__ import annotations
 
 import csv
 import io
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
 from typing import Any
 
 from fleetcount.errors import InputError
-from fleetcount.series import canonical
+from fleetcount.series import canonical, layout, polynomials
+from fleetcount.series.area import area_unit
 from fleetcount.series.definition import Series
-from fleetcount.series.tally import Tally
+from fleetcount.series.tally import Place, Tally
 
 FORMAT = 1
+
+Cell = tuple[Place, tuple[int, ...]]
+"""Length and statistics, then the count and one number a moment."""
 
 
 @dataclass(frozen=True)
@@ -37,17 +41,42 @@ class CoefficientTable:
     chain: str
     so_far: Tally | None = None
 
-    columns: tuple[str, ...] = ("n", "count")
+    @property
+    def columns(self) -> tuple[str, ...]:
+        """Headings of `rows()`: length, statistics, count, moments."""
+        return self.series.columns
 
     @property
     def least(self) -> int:
         """The least length that the object can have."""
         return self.series.rule.least_length(self.series.lattice)
 
+    @property
+    def denominator(self) -> int:
+        """What each moment is to be divided by, besides the divisor."""
+        return self.series.denominator
+
+    @property
+    def area_denominator(self) -> int | None:
+        """What areas are to be divided by to have them in areas of the cell; None where there are none."""
+        named = any(one.name == "area" for one in self.series.statistics)
+        return area_unit(self.series.lattice).denominator if named else None
+
     def counts(self) -> dict[int, int]:
-        """Final counts by length, from the least possible length on, zeros included."""
+        """Final counts by length, statistics summed out, from the least possible length on, zeros included."""
         known = self.sums.counts()
         return {n: known.get(n, 0) for n in self._lengths()}
+
+    def moment(self, name: str) -> dict[int, int]:
+        """A moment by length, statistics summed out, to be divided by `denominator`."""
+        if name not in self.series.moments:
+            mend = f"it has {', '.join(self.series.moments) or 'none'}"
+            raise InputError(f"no moment {name!r} in this table", where=self.series.title(), mend=mend)
+        column = 1 + self.series.moments.index(name)
+        sums = dict.fromkeys(self._lengths(), 0)
+        for place, values in self.sums.sorted_rows():
+            sums[place[0]] += values[column]
+        return sums
 
     def __getitem__(self, n: int) -> int:
         """The final count of length n (of one cell, or of one start site, see `divisor`)."""
@@ -66,14 +95,11 @@ class CoefficientTable:
                 mend=f"final so far: {self._reach()}",
             )
         kept = Tally(self.sums.width, {p: row for p, row in self.sums.rows.items() if p[0] <= to})
-        return CoefficientTable(self.series, to, kept, self.divisor, self.complete, self.chain)
+        return replace(self, final=to, sums=kept, so_far=None)
 
     def per_site(self) -> CoefficientTable:
         """The same numbers with the divisor that makes them the number per site instead of per cell."""
-        sites = len(self.series.lattice.sites) if self.series.rule.closed else self.divisor
-        return CoefficientTable(
-            self.series, self.final, self.sums, sites, self.complete, self.chain, self.so_far
-        )
+        return replace(self, divisor=len(self.series.lattice.sites)) if self.series.rule.closed else self
 
     def _reach(self) -> str:
         return "nothing" if self.final is None else f"lengths {self.least} to {self.final}"
@@ -81,19 +107,25 @@ class CoefficientTable:
     def _lengths(self) -> range:
         return range(self.least, -1 if self.final is None else self.final + 1)
 
+    def cells(self) -> list[Cell]:
+        """The final terms in order; joint tables leave out cells of zeros, others have one for every length."""
+        if self.series.statistics:
+            return list(self.sums.sorted_rows())
+        zeros = (0,) * self.series.width
+        return [((n,), self.sums.rows.get((n,), zeros)) for n in self._lengths()]
+
+    def partial_cells(self) -> list[Cell]:
+        """The sums so far of lengths that are not final."""
+        found = [] if self.so_far is None else self.so_far.sorted_rows()
+        return [(place, values) for place, values in found if self.final is None or place[0] > self.final]
+
     def rows(self) -> list[list[Any]]:
-        """One row a length: `[n, "count"]`."""
-        return [[n, str(count)] for n, count in self.counts().items()]
+        """One row a cell: `[n, statistic..., "count", "moment"...]`, sums as decimal strings."""
+        return _listed(self.cells())
 
     def partial_rows(self) -> list[list[Any]]:
-        """One row for each length that is not final, with the sum so far."""
-        if self.so_far is None:
-            return []
-        return [
-            [n, str(count)]
-            for n, count in self.so_far.counts().items()
-            if self.final is None or n > self.final
-        ]
+        """The same of what is not final, with the sums so far."""
+        return _listed(self.partial_cells())
 
     def document(self) -> dict[str, Any]:
         """The table as a JSON document; exact integers are decimal strings."""
@@ -111,6 +143,10 @@ class CoefficientTable:
             "complete": self.complete,
             "chain": self.chain,
         }
+        if self.series.moments:
+            document["denominator"] = str(self.denominator)
+        if self.area_denominator is not None:
+            document["area_denominator"] = str(self.area_denominator)
         if self.so_far is not None:
             document["so_far"] = self.partial_rows()
         return document
@@ -128,31 +164,24 @@ class CoefficientTable:
         return out.getvalue()
 
     def plain(self) -> str:
-        """Two columns, length and term, without a heading: what computer algebra systems and plotters read."""
-        return "".join(f"{n} {count}\n" for n, count in self.rows())
+        """The columns separated by blanks, without a heading: what computer algebra systems and plotters read."""
+        return "".join(f"{' '.join(map(str, row))}\n" for row in self.rows())
 
-    def text(self) -> str:
-        """A table for people."""
-        lines = [self.series.title()]
-        if self.divisor != 1:
-            lines[0] += f" (sums over the {self.divisor} sites of a cell; divide by {self.divisor})"
-        rows = self.rows()
-        marked = [(n, f"{count} so far") for n, count in self.partial_rows()]
-        if not rows and not marked:
-            return f"{lines[0]}\n  no final term yet\n"
-        lines += _aligned([("n", "count"), *rows, *marked])
-        return "\n".join(lines) + "\n"
+    def text(self, width: int = layout.WIDTH) -> str:
+        """A table for people, in lines of at most `width` characters where its numbers allow it."""
+        return layout.text(self, width)
+
+    def polynomials(self, quantity: str = "count") -> dict[int, str]:
+        """For each length the generating polynomial of a count or moment: `28 + 8*c`."""
+        return polynomials.polynomials(self, quantity)
+
+    def polynomial_text(self) -> str:
+        """All generating polynomials, one a line after its length, with comment lines that name the variables."""
+        return polynomials.text(self)
 
     def __str__(self) -> str:
         return self.text()
 
 
-def _aligned(rows: Sequence[Sequence[object]]) -> list[str]:
-    left = max(len(str(row[0])) for row in rows)
-    right = max(len(str(row[1]).removesuffix(" so far")) for row in rows)
-    lines = []
-    for n, count in rows:
-        number = str(count).removesuffix(" so far")
-        mark = " so far" if number != str(count) else ""
-        lines.append(f"  {n!s:>{left}}  {number:>{right}}{mark}")
-    return lines
+def _listed(cells: Iterable[Cell]) -> list[list[Any]]:
+    return [[*place, *map(str, values)] for place, values in cells]

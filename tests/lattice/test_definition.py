@@ -10,7 +10,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from fleetcount.errors import InputError, LatticeError
-from fleetcount.lattice import checks, definition
+from fleetcount.lattice import checks, definition, files
 from fleetcount.lattice.model import Arc
 
 GOOD = """
@@ -220,7 +220,7 @@ def test_files_that_cannot_be_read(tmp_path: Path) -> None:
     rubbish, huge = tmp_path / "rubbish.toml", tmp_path / "huge.toml"
     rubbish.write_bytes(b"\xff\xfe\x00\x01")
     with huge.open("wb") as file:
-        file.truncate(definition.GREATEST_FILE + 1)
+        file.truncate(files.GREATEST_FILE + 1)
     for path in (tmp_path / "none.toml", tmp_path, rubbish, huge, tmp_path / ("x" * 300), Path("a\0b.toml")):
         with pytest.raises(InputError) as caught:
             definition.load(path)

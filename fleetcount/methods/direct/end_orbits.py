@@ -47,8 +47,8 @@ def _before(a: Array, b: Array) -> Array:
     return np.asarray(sign < 0)
 
 
-def unfolded(series: Series, table: Tally) -> Tally:
-    """The rows of each orbit shared out equally over its ends.
+def unfolded(series: Series, table: Tally, partial: bool = False) -> Tally:
+    """The rows of each orbit shared out equally over its ends; partial sums are rounded down.
 
     Raises:
         TrustError: a remainder, which no correct sum can leave.
@@ -68,7 +68,7 @@ def unfolded(series: Series, table: Tally) -> Tally:
     spread = Tally(table.width)
     for place, values in together.sorted_rows():
         orbit = orbits[place[at : at + width]]
-        if any(value % len(orbit) for value in values):
+        if not partial and any(value % len(orbit) for value in values):
             raise TrustError(f"{values[0]} is no multiple of the {len(orbit)} ends of an orbit", where=f"row {place}")
         share = tuple(value // len(orbit) for value in values)
         for end in orbit:
