@@ -1,7 +1,8 @@
 """Where objects are rooted: the start sites that a series is counted from, and what the sums are divided by.
 
 Walks start where the series says. Closed objects are found as closed walks from roots: from each kind of site (with
-the symmetries that fix it), or, polygons only, from the least site of each (order of positions, no symmetry left).
+the symmetries that fix it; where directions are named, from every site), or, polygons only, from the least site of each
+(order of positions, no symmetry left).
 In a half-space the root is the least of the sites on the surface; in a slab or tube each site between the walls is a
 root, up to the translations that keep them; in other regions the one root is the start.
 """
@@ -55,7 +56,8 @@ def roots(series: Series, least: bool) -> tuple[Root, ...]:
         return (Root(series.start, (), 1),)
     if series.rule.closed and series.walls:
         return _between(series)
-    if least:
+    turned = any(s.direction for s in series.statistics)  # a symmetry between sites may turn what they name
+    if least or turned:
         return tuple(Root(site, (), 1) for site in range(len(series.lattice.sites)))
     return tuple(Root(orbit[0], (), len(orbit)) for orbit in site_orbits(series.lattice))
 
