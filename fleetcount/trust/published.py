@@ -114,7 +114,7 @@ def compare(table: CoefficientTable) -> Agreement | None:
             differing.append(wrong)
     if not reached and not differing:
         return None
-    return Agreement(tuple(reached), min(differing)[1] if differing else None)
+    return Agreement(tuple(reached), min(differing, key=lambda one: one[0])[1] if differing else None)
 
 
 def _compared(

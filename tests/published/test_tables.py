@@ -10,10 +10,11 @@ import pytest
 from fleetcount.lattice import catalogue
 from fleetcount.series.defining import define
 from fleetcount.trust import published
-from fleetcount.trust.published import PublishedTable, PublishedTerms
+from fleetcount.trust.matching import PublishedTerms, for_series
+from fleetcount.trust.published import PublishedTable
 from tests.published import own_lattices
-from tests.published.conftest import Count
-from tests.published.reach import OWN_LATTICE, PLAIN
+from tests.published.conftest import Answer, Count
+from tests.published.reach import OWN_LATTICE, PLAIN, REFINED, Question
 
 Speaking = dict[str, tuple[str, str, PublishedTerms]]
 Tables = Callable[[str], PublishedTable]
@@ -25,14 +26,14 @@ def series_of() -> Speaking:
     found = {}
     for name in catalogue.names():
         for kind in ("walk", "polygon"):
-            for terms in published.for_series(define(catalogue.find(name), kind)):
+            for terms in for_series(define(catalogue.find(name), kind)):
                 found[terms.table.id] = (name, kind, terms)
     return found
 
 
 def _reproduce_plain(table_id: str, to: int, counted: Count, series_of: Speaking) -> None:
     lattice, kind, published_terms = series_of[table_id]
-    expected = {n: value for n, value in published_terms.terms.items() if n <= to}
+    expected = {n: value for (n,), value in published_terms.terms.items() if n <= to}
     counts = counted(lattice, kind, to=to)
     assert {n: counts[n] for n in expected} == expected
 
@@ -61,3 +62,30 @@ def test_counts_on_a_lattice_of_ones_own(
     expected = published_table(table_id).terms()
     counts = counted(path, "walk", to=OWN_LATTICE[table_id], start=start)
     assert {n: counts[n] for n in expected} == expected
+
+
+def _reproduce(question: Question, to: int, answered: Answer, published_table: Tables) -> None:
+    agreement = published.compare(answered(question, to))
+    assert agreement is not None
+    assert agreement.disagreement is None
+    reached = {(part.table, part.n) for part in agreement.reached}
+    for table_id in question.tables:
+        last = max(n for n in published_table(table_id).terms() if n <= to)
+        assert (table_id, last) in reached
+
+
+@pytest.mark.parametrize("question", REFINED, ids=Question.name)
+def test_other_counts_are_the_published_ones(
+    question: Question, answered: Answer, published_table: Tables
+) -> None:
+    """Objects, joint counts, moments, regions and ends equal every published term up to the length counted."""
+    _reproduce(question, question.ordinary, answered, published_table)
+
+
+@pytest.mark.long
+@pytest.mark.parametrize("question", REFINED, ids=Question.name)
+def test_other_counts_are_the_published_ones_further(
+    question: Question, answered: Answer, published_table: Tables
+) -> None:
+    """The same for what about ten seconds a table reach."""
+    _reproduce(question, question.long, answered, published_table)
