@@ -51,6 +51,7 @@ class Tables(NamedTuple):
     radius: Array
     dual: Array
     place: Array
+    stride: Array
     unclosed: Array
 
 
@@ -161,8 +162,9 @@ def _ground(series: Series, root: Prefix, top: int) -> RefinedGround:
         patch.free.astype(np.int32),
         _squares(series, patch, square),
         square,
-        np.ascontiguousarray(dual.T),
-        np.ascontiguousarray(positions.T),
+        np.ascontiguousarray(dual),
+        np.ascontiguousarray(positions),
+        _strides(lattice, traits.arms),
         np.array([m.unclosed for m in measures] + [0] * (2 - len(measures)), dtype=np.int32),
     )
     return RefinedGround(
@@ -216,7 +218,9 @@ def _home(series: Series, patch: Patch, root: Prefix) -> Array:
     """Least number of steps to the goal, int32 [sites + 1]: home for closed objects, else the given end."""
     if series.rule.closed:
         entries = patch.previous[rk.START] if series.lattice.one_way else patch.next[rk.START]
-        if root.least and not series.lattice.one_way:  # in one sense only: home by a greater arm than it left by
+        if (
+            root.least and not series.lattice.one_way
+        ):  # in one sense only: home by a greater arm than it left by
             entries = patch.next[rk.START, root.arms[0] + 1 :] if root.arms else entries
         home = distance_to(patch, [int(x) for x in entries]) + 1
     elif series.end is not None:
@@ -255,6 +259,15 @@ def _ways(lattice: Lattice, arms: int) -> Array:
     return ways
 
 
+def _strides(lattice: Lattice, arms: int) -> Array:
+    """What each arm of each kind of site adds to a position, int64 [kinds, arms, dimension]."""
+    strides = np.zeros((len(lattice.sites), arms, lattice.dimension), dtype=np.int64)
+    for kind, out in enumerate(lattice.arms):
+        for arm, arc in enumerate(out):
+            strides[kind, arm] = lattice.step(arc)
+    return strides
+
+
 def _squares(series: Series, patch: Patch, square: Array) -> Array:
     """Squared distances and squared heights from the start, int64 [2, sites + 1], those that are asked for first."""
     names = set(series.moments)
@@ -277,10 +290,21 @@ def load(series: Series) -> Callable[..., bool]:
         flat32, flat64 = np.zeros((1, 1), dtype=np.int32), np.zeros((2, 1), dtype=np.int64)
         line32, line64 = np.zeros(1, dtype=np.int32), np.zeros(1, dtype=np.int64)
         index, cube = np.zeros((1, 1), dtype=np.uint32), np.zeros((1, 1, 1), dtype=np.uint32)
-        stacked = np.zeros((2, 1, 1), dtype=np.int32)
+        stacked, block64 = np.zeros((2, 1, 1), dtype=np.int32), np.zeros((1, 1, 1), dtype=np.int64)
         symmetry = (np.ones((1, 1, 1), dtype=np.int32), cube)
         tables = (index, np.zeros(1, dtype=np.uint16), *symmetry, index, index, index, line32, stacked)
-        rest = (np.zeros((2, 1), dtype=np.int32), flat32, line32, line32, flat64, line64, flat64, flat64, line32)
+        rest = (
+            np.zeros((2, 1), dtype=np.int32),
+            flat32,
+            line32,
+            line32,
+            flat64,
+            line64,
+            flat64,
+            flat64,
+            block64,
+            line32,
+        )
         stack, marks = RefinedStack.of(4, traits.dimension, (6, 1, 1, 4)), RefinedMarks.of(1, 1)
         run(*tables, *rest, *marks.arrays(), *stack.arrays(), 0)
 

@@ -21,7 +21,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from typing import NamedTuple
 
-from numba import njit, uint32
+from numba import int64, njit, uint32, uint64
 
 from fleetcount.methods.direct.kernels import DEPTH, FLOOR, NODES, TOP
 
@@ -30,6 +30,8 @@ SITES, EDGES, NEIGHBOURS = range(3)
 ANYWHERE, TRAPPED, ON_TOP, AT_TARGET = range(4)
 START = 1
 FAR = 1 << 30
+VISITED = 1 << 20
+"""Added to `near[site]` while the site is visited, so that one look tells both: more than any number of neighbours."""
 
 
 class Traits(NamedTuple):
@@ -60,6 +62,43 @@ class Traits(NamedTuple):
     dimension: int
 
 
+@njit(forceinline=True, nogil=True)  # type: ignore[untyped-decorator]
+def _after(sort, q, before, gain, value, here, a, there, pairs, turned, again):  # type: ignore[no-untyped-def]
+    """A statistic's value after the step from `here` by arm `a` to `there`; spans apart."""
+    if sort == ADDED or sort == AREA:
+        return before + gain[q, here, a]
+    if sort == CONTACTS:
+        return before + pairs
+    if sort == TURNED:
+        return before + turned
+    if sort == REVISITED:
+        return before + again
+    return value[q, there]
+
+
+@njit(forceinline=True, nogil=True)  # type: ignore[untyped-decorator]
+def _add(sums, n, cell, times, squares, square, site, monomers, far, gyration, apart):  # type: ignore[no-untyped-def]
+    """Add an object that ends at a site to its cell of the sums, `times` times."""
+    sums[n, uint64(cell)] += times
+    for q in range(squares):
+        sums[n, uint64(cell + 1 + q)] += times * square[uint32(q), site]
+    if monomers:
+        sums[n, uint64(cell + 1 + squares)] += times * far
+    if gyration:
+        sums[n, uint64(cell + 1 + squares + monomers)] += times * apart
+
+
+@njit(forceinline=True, nogil=True)  # type: ignore[untyped-decorator]
+def _ways_on(nxt, open_arms, marks, least, site, before):  # type: ignore[no-untyped-def]
+    """Neighbours of a site to go on to: neither marked with `least` or more nor the unmarked site `before`."""
+    ways = open_arms[site]
+    for j in range(nxt.shape[1]):
+        beyond = nxt[site, uint32(j)]
+        if beyond != 0 and (marks[beyond] >= least or beyond == before):
+            ways -= 1
+    return ways
+
+
 def refined_kernel(
     arms: int,
     adjacent: int,
@@ -80,7 +119,8 @@ def refined_kernel(
     `home` int32 [sites + 1] steps to the goal; `gain` int32 [2, sites + 1, arms]; `value` int32 [2, sites + 1]; `way`
     int32 [kinds, arms]; `height`, `open_arms` int32 [sites + 1]; `square` int64 [2, sites + 1],
     moments of the end; `radius` int64 [sites + 1], squared distances; `dual` and `place` int64
-    [dimension, sites + 1], positions with and without the metric applied; `unclosed` int32 [2], taken off a statistic
+    [sites + 1, dimension], positions with and without the metric applied; `stride` int64 [kinds, arms, dimension], what
+    an arm adds to a position; `unclosed` int32 [2], taken off a statistic
     when an object closes, because the start was counted already.
 
     Marks: `seen` and `near` int32 [sites + 1], `used` uint8 [edges + 1]. Stack by depth: `level`, `most`, `least` int32
@@ -94,292 +134,298 @@ def refined_kernel(
     spans = SPANNED in sorts
     turns = TURNED in sorts
     columns = 1 + squares + monomers + pairs
+    last_closed = closed or ends == AT_TARGET
 
     @njit(nogil=True, cache=True)
     def run(  # type: ignore[no-untyped-def]
         nxt, kind, images, onward, beside, edge, reverse, home, gain, value, way, height, open_arms, square,
-        radius, dual, place, unclosed, seen, near, used, level, most, least, crest, last_way, spread, norm, vector,
-        path, arm, state, weight, sums, reg, limit,
+        radius, dual, place, stride, unclosed, seen, near, used, level, most, least, crest, last_way, spread, norm,
+        vector, path, arm, state, weight, sums, reg, second, limit,
     ):  # fmt: skip
         depth = reg[DEPTH]
         floor = reg[FLOOR]
         top = reg[TOP]
         nodes = 0
         while nodes < limit:
-            here = path[depth]
-            a = arm[depth]
-            if a == arms:
+            d = uint64(depth)
+            here = path[d]
+            begin = arm[d]
+            if begin == arms:
                 if depth == floor:
                     reg[DEPTH] = depth
                     reg[NODES] += nodes
                     return True
-                seen[here] -= 1
-                if adjacent > 0 and seen[here] == 0:
+                gone = True
+                if avoids == EDGES:
+                    seen[here] -= 1
+                    gone = seen[here] == 0
+                else:
+                    near[here] -= VISITED
+                if adjacent > 0 and gone:
                     for j in range(adjacent):
                         near[beside[here, uint32(j)]] -= 1
                 depth -= 1
                 if avoids == EDGES:
-                    used[edge[path[depth], arm[depth] - uint32(1)]] = 0
+                    used[edge[path[uint64(depth)], arm[uint64(depth)] - uint32(1)]] = 0
                 continue
-            arm[depth] = a + 1
-            there = nxt[here, a]
-            if there == 0:
-                continue
-            if avoids == EDGES:
-                if used[edge[here, a]] != 0:
-                    continue
-            elif seen[there] != 0:
-                continue
-            if avoids == NEIGHBOURS and near[there] != 1:
-                continue
+            # Below the last site that is marked all arms are taken in one go.
+            end = int64(begin) + 1
+            if depth == top - 2 and depth != floor and not last_closed:
+                end = arms
+            arm[d] = end
             n = depth + 1
-            if (closed or ends == AT_TARGET) and n + home[there] > top:
-                continue
-            factor = weight[depth]
-            now = state[depth]
-            if now != 0:
-                times = images[now, kind[here], a]
-                if times == 0:
-                    continue
-                factor *= times
-                now = onward[now, kind[here], a]
-            nodes += 1
-
-            fresh = 1 if seen[there] == 0 else 0
-            joined = 1
-            if avoids == EDGES and one_way and used[reverse[here, a]] != 0:
-                joined = 0
-            turned = 0
-            heading = 0
-            if turns:
-                heading = way[kind[here], a]
-                turned = 1 if depth > 0 and heading != last_way[depth] else 0
-            s0 = 0
-            s1 = 0
-            m0 = 0
-            l0 = 0
-            m1 = 0
-            l1 = 0
-            if statistics > 0:
-                s0 = level[depth, 0]
-                if first_sort == ADDED or first_sort == AREA:
-                    s0 += gain[0, here, a]
-                elif first_sort == CONTACTS:
-                    s0 += fresh * near[there] - joined
-                elif first_sort == TURNED:
-                    s0 += turned
-                elif first_sort == REVISITED:
-                    s0 += 1 if seen[there] == 1 else 0
-                elif first_sort == AT_END:
-                    s0 = value[0, there]
-                else:
-                    m0 = max(most[depth, 0], value[0, there])
-                    l0 = min(least[depth, 0], value[0, there])
-                    s0 = m0 - l0
-            if statistics > 1:
-                s1 = level[depth, 1]
-                if second_sort == ADDED or second_sort == AREA:
-                    s1 += gain[1, here, a]
-                elif second_sort == CONTACTS:
-                    s1 += fresh * near[there] - joined
-                elif second_sort == TURNED:
-                    s1 += turned
-                elif second_sort == REVISITED:
-                    s1 += 1 if seen[there] == 1 else 0
-                elif second_sort == AT_END:
-                    s1 = value[1, there]
-                else:
-                    m1 = max(most[depth, 1], value[1, there])
-                    l1 = min(least[depth, 1], value[1, there])
-                    s1 = m1 - l1
-
-            far = 0
-            wide = 0
-            if monomers or pairs:
-                far = spread[depth] + radius[there]
-            if pairs:
-                wide = norm[depth] + radius[there]
-                for i in range(dimension):
-                    wide += 2 * vector[depth, i] * dual[i, there]
-
-            if closed:
-                if home[there] == 1 and n < top:
-                    for k in range(arms):
-                        if nxt[there, uint32(k)] != START:
-                            continue
-                        if avoids == EDGES:
-                            back_again = edge[there, uint32(k)]
-                            if used[back_again] != 0 or back_again == edge[here, a]:
-                                continue
-                        c0 = s0
-                        c1 = s1
-                        rejoined = 1
-                        if one_way and n == 1 and avoids == SITES:
-                            rejoined = 0
-                        if one_way and avoids == EDGES:
-                            over = reverse[there, uint32(k)]
-                            if over != 0 and (used[over] != 0 or over == edge[here, a]):
-                                rejoined = 0
-                        bend = 0
-                        if turns:
-                            final = way[kind[there], uint32(k)]
-                            first = last_way[1] if depth > 0 else heading
-                            bend = (1 if final != heading else 0) + (1 if final != first else 0)
-                        if statistics > 0:
-                            if first_sort == ADDED or first_sort == AREA:
-                                c0 += gain[0, there, uint32(k)] - unclosed[0]
-                            elif first_sort == CONTACTS:
-                                c0 -= rejoined
-                            elif first_sort == TURNED:
-                                c0 += bend
-                        if statistics > 1:
-                            if second_sort == ADDED or second_sort == AREA:
-                                c1 += gain[1, there, uint32(k)] - unclosed[1]
-                            elif second_sort == CONTACTS:
-                                c1 -= rejoined
-                            elif second_sort == TURNED:
-                                c1 += bend
-                        if first_sort == AREA:
-                            c0 = abs(c0)
-                        if second_sort == AREA:
-                            c1 = abs(c1)
-                        sums[n + 1, c0, c1, 0] += factor
-                        if pairs:
-                            sums[n + 1, c0, c1, columns - 1] += factor * ((n + 1) * far - wide)
-            else:
-                counts = True
-                if ends == TRAPPED:
-                    ways_on = open_arms[there]
-                    for k in range(arms):
-                        beyond = nxt[there, uint32(k)]
-                        if beyond != 0 and seen[beyond] != 0:
-                            ways_on -= 1
-                    counts = ways_on == 0
-                elif ends == ON_TOP:
-                    counts = height[there] >= crest[depth]
-                elif ends == AT_TARGET:
-                    counts = home[there] == 0
-                if counts:
-                    sums[n, s0, s1, 0] += factor
-                    for q in range(squares):
-                        sums[n, s0, s1, 1 + q] += factor * square[q, there]
-                    if monomers:
-                        sums[n, s0, s1, 1 + squares] += factor * far
-                    if pairs:
-                        sums[n, s0, s1, columns - 1] += factor * ((n + 1) * far - wide)
-
-            if not closed and ends != AT_TARGET and n == top - 1:
-                # The last step: nothing is marked for it, not even the site that it is taken from.
-                for k in range(arms):
-                    x = nxt[there, uint32(k)]
-                    if x == 0:
+            e = uint64(n)
+            before = state[d]
+            carried = weight[d]
+            for step in range(int64(begin), end):
+                a = uint32(step)
+                there = nxt[here, a]
+                beside_it = 0
+                if avoids == EDGES:
+                    if there == 0:
                         continue
-                    if avoids == EDGES:
-                        along = edge[there, uint32(k)]
-                        if used[along] != 0 or along == edge[here, a]:
-                            continue
-                    elif seen[x] != 0:
+                    if used[edge[here, a]] != 0:
                         continue
-                    if avoids == NEIGHBOURS and near[x] != 0:
-                        continue
-                    last_factor = factor
-                    if now != 0:
-                        times = images[now, kind[there], uint32(k)]
-                        if times == 0:
-                            continue
-                        last_factor = factor * times
-                    nodes += 1
-                    c0 = s0
-                    c1 = s1
-                    pair = 0
                     if adjacent > 0:
-                        pair = near[x]
-                        if avoids == EDGES:
-                            pair = (near[x] + fresh if seen[x] == 0 else 0) - 1
-                            if one_way:
+                        beside_it = near[there]
+                else:
+                    beside_it = near[there]
+                    if beside_it >= VISITED:
+                        continue
+                if avoids == NEIGHBOURS and beside_it != 1:
+                    continue
+                if last_closed and n + home[there] > top:
+                    continue
+                factor = carried
+                now = before
+                if now != 0:
+                    times = images[now, kind[here], a]
+                    if times == 0:
+                        continue
+                    factor *= times
+                    now = onward[now, kind[here], a]
+                nodes += 1
+
+                fresh = 1
+                again = 0
+                if avoids == EDGES:
+                    fresh = 1 if seen[there] == 0 else 0
+                    again = 1 if seen[there] == 1 else 0
+                pair = 0
+                if adjacent > 0:
+                    pair = fresh * beside_it - 1
+                    if avoids == EDGES and one_way and used[reverse[here, a]] != 0:
+                        pair += 1
+                turned = 0
+                heading = 0
+                if turns:
+                    heading = way[kind[here], a]
+                    turned = 1 if depth > 0 and heading != last_way[d] else 0
+                s0 = 0
+                s1 = 0
+                m0 = 0
+                l0 = 0
+                m1 = 0
+                l1 = 0
+                if first_sort == SPANNED:
+                    m0 = max(most[d, 0], value[0, there])
+                    l0 = min(least[d, 0], value[0, there])
+                    s0 = m0 - l0
+                elif statistics > 0:
+                    s0 = _after(first_sort, 0, level[d, 0], gain, value, here, a, there, pair, turned, again)
+                if second_sort == SPANNED:
+                    m1 = max(most[d, 1], value[1, there])
+                    l1 = min(least[d, 1], value[1, there])
+                    s1 = m1 - l1
+                elif statistics > 1:
+                    s1 = _after(second_sort, 1, level[d, 1], gain, value, here, a, there, pair, turned, again)
+
+                far = 0
+                wide = 0
+                if monomers or pairs:
+                    far = spread[d] + radius[there]
+                if pairs:
+                    wide = norm[d] + radius[there]
+                    for i in range(dimension):
+                        wide += 2 * vector[d, uint32(i)] * place[there, uint32(i)]
+
+                if closed:
+                    if home[there] == 1 and n < top:
+                        for k in range(arms):
+                            if nxt[there, uint32(k)] != START:
+                                continue
+                            if avoids == EDGES:
+                                back_again = edge[there, uint32(k)]
+                                if used[back_again] != 0 or back_again == edge[here, a]:
+                                    continue
+                            c0 = s0
+                            c1 = s1
+                            rejoined = 1
+                            if one_way and n == 1 and avoids == SITES:
+                                rejoined = 0
+                            if one_way and avoids == EDGES:
                                 over = reverse[there, uint32(k)]
                                 if over != 0 and (used[over] != 0 or over == edge[here, a]):
-                                    pair += 1
-                    if statistics > 0:
-                        if first_sort == ADDED or first_sort == AREA:
-                            c0 += gain[0, there, uint32(k)]
-                        elif first_sort == CONTACTS:
-                            c0 += pair
-                        elif first_sort == TURNED:
-                            c0 += 1 if way[kind[there], uint32(k)] != heading else 0
-                        elif first_sort == REVISITED:
-                            c0 += 1 if seen[x] == 1 else 0
-                        elif first_sort == AT_END:
-                            c0 = value[0, x]
-                        else:
-                            c0 = max(m0, value[0, x]) - min(l0, value[0, x])
-                    if statistics > 1:
-                        if second_sort == ADDED or second_sort == AREA:
-                            c1 += gain[1, there, uint32(k)]
-                        elif second_sort == CONTACTS:
-                            c1 += pair
-                        elif second_sort == TURNED:
-                            c1 += 1 if way[kind[there], uint32(k)] != heading else 0
-                        elif second_sort == REVISITED:
-                            c1 += 1 if seen[x] == 1 else 0
-                        elif second_sort == AT_END:
-                            c1 = value[1, x]
-                        else:
-                            c1 = max(m1, value[1, x]) - min(l1, value[1, x])
+                                    rejoined = 0
+                            bend = 0
+                            if turns:
+                                final = way[kind[there], uint32(k)]
+                                first = last_way[1] if depth > 0 else heading
+                                bend = (1 if final != heading else 0) + (1 if final != first else 0)
+                            if statistics > 0:
+                                if first_sort == ADDED or first_sort == AREA:
+                                    c0 += gain[0, there, uint32(k)] - unclosed[0]
+                                elif first_sort == CONTACTS:
+                                    c0 -= rejoined
+                                elif first_sort == TURNED:
+                                    c0 += bend
+                            if statistics > 1:
+                                if second_sort == ADDED or second_sort == AREA:
+                                    c1 += gain[1, there, uint32(k)] - unclosed[1]
+                                elif second_sort == CONTACTS:
+                                    c1 -= rejoined
+                                elif second_sort == TURNED:
+                                    c1 += bend
+                            if first_sort == AREA:
+                                c0 = abs(c0)
+                            if second_sort == AREA:
+                                c1 = abs(c1)
+                            cell = (c0 * second + c1) * columns
+                            sums[uint64(n + 1), uint64(cell)] += factor
+                            if pairs:
+                                sums[uint64(n + 1), uint64(cell + columns - 1)] += factor * (
+                                    (n + 1) * far - wide
+                                )
+                else:
+                    counts = True
                     if ends == TRAPPED:
-                        ways_on = open_arms[x]
-                        for j in range(arms):
-                            beyond = nxt[x, uint32(j)]
-                            if beyond != 0 and (seen[beyond] != 0 or beyond == there):
-                                ways_on -= 1
-                        if ways_on != 0:
-                            continue
+                        counts = _ways_on(nxt, open_arms, near, VISITED, there, 0) == 0
                     elif ends == ON_TOP:
-                        if height[x] < max(crest[depth], height[there]):
+                        counts = height[there] >= crest[d]
+                    elif ends == AT_TARGET:
+                        counts = home[there] == 0
+                    if counts:
+                        cell = (s0 * second + s1) * columns
+                        apart = (n + 1) * far - wide
+                        _add(sums, e, cell, factor, squares, square, there, monomers, far, pairs, apart)
+
+                if not last_closed and n == top - 1:
+                    # The last step: nothing is marked for it, not even the site that it is taken from.
+                    t = uint64(top)
+                    apart = 0
+                    if pairs:
+                        apart = (n + 2) * far - wide
+                        for i in range(dimension):
+                            j = uint32(i)
+                            total = vector[d, j] + dual[there, j]
+                            vector[e, j] = 2 * total
+                            apart -= 2 * total * place[there, j]
+                    for k in range(arms):
+                        b = uint32(k)
+                        x = nxt[there, b]
+                        if avoids == EDGES:
+                            if x == 0:
+                                continue
+                            along = edge[there, b]
+                            if used[along] != 0 or along == edge[here, a]:
+                                continue
+                        elif near[x] >= VISITED:
                             continue
-                    sums[top, c0, c1, 0] += last_factor
-                    for q in range(squares):
-                        sums[top, c0, c1, 1 + q] += last_factor * square[q, x]
-                    if monomers or pairs:
-                        far_out = far + radius[x]
+                        if avoids == NEIGHBOURS and near[x] != 0:
+                            continue
+                        last_factor = factor
+                        if now != 0:
+                            times = images[now, kind[there], b]
+                            if times == 0:
+                                continue
+                            last_factor = factor * times
+                        nodes += 1
+                        pair = 0
+                        again = 0
+                        if avoids == EDGES:
+                            again = 1 if seen[x] == 1 else 0
+                        if adjacent > 0:
+                            pair = near[x]
+                            if avoids == EDGES:
+                                pair = (near[x] + fresh if seen[x] == 0 else 0) - 1
+                                if one_way:
+                                    over = reverse[there, b]
+                                    if over != 0 and (used[over] != 0 or over == edge[here, a]):
+                                        pair += 1
+                        turned = 0
+                        if turns:
+                            turned = 1 if way[kind[there], b] != heading else 0
+                        c0 = 0
+                        c1 = 0
+                        if first_sort == SPANNED:
+                            c0 = max(m0, value[0, x]) - min(l0, value[0, x])
+                        elif statistics > 0:
+                            c0 = _after(first_sort, 0, s0, gain, value, there, b, x, pair, turned, again)
+                        if second_sort == SPANNED:
+                            c1 = max(m1, value[1, x]) - min(l1, value[1, x])
+                        elif statistics > 1:
+                            c1 = _after(second_sort, 1, s1, gain, value, there, b, x, pair, turned, again)
+                        if ends == TRAPPED:
+                            if _ways_on(nxt, open_arms, near, VISITED, x, there) != 0:
+                                continue
+                        elif ends == ON_TOP:
+                            if height[x] < max(crest[d], height[there]):
+                                continue
+                        cell = (c0 * second + c1) * columns
+                        far_out = 0
                         if monomers:
-                            sums[top, c0, c1, 1 + squares] += last_factor * far_out
+                            far_out = far + radius[x]
+                        last_apart = 0
                         if pairs:
-                            wide_out = wide + radius[x]
+                            last_apart = apart + top * radius[x]
                             for i in range(dimension):
-                                wide_out += 2 * (vector[depth, i] + place[i, there]) * dual[i, x]
-                            sums[top, c0, c1, columns - 1] += last_factor * ((top + 1) * far_out - wide_out)
-            elif n < top - closed and not (ends == AT_TARGET and home[there] == 0):
-                if avoids == EDGES:
-                    used[edge[here, a]] = 1
-                seen[there] += 1
-                if adjacent > 0 and fresh:
-                    for j in range(adjacent):
-                        near[beside[there, uint32(j)]] += 1
-                path[n] = there
-                arm[n] = 0
-                state[n] = now
-                weight[n] = factor
-                if turns:
-                    last_way[n] = heading
-                if statistics > 0:
-                    level[n, 0] = s0
-                if statistics > 1:
-                    level[n, 1] = s1
-                if spans:
-                    most[n, 0] = m0
-                    least[n, 0] = l0
-                    most[n, 1] = m1
-                    least[n, 1] = l1
-                if ends == ON_TOP:
-                    crest[n] = max(crest[depth], height[there])
-                if monomers or pairs:
-                    spread[n] = far
-                if pairs:
-                    norm[n] = wide
-                    for i in range(dimension):
-                        vector[n, i] = vector[depth, i] + place[i, there]
-                depth = n
+                                last_apart -= vector[e, uint32(i)] * stride[kind[there], b, uint32(i)]
+                        _add(
+                            sums,
+                            t,
+                            cell,
+                            last_factor,
+                            squares,
+                            square,
+                            x,
+                            monomers,
+                            far_out,
+                            pairs,
+                            last_apart,
+                        )
+                elif n < top - closed and not (ends == AT_TARGET and home[there] == 0):
+                    if avoids == EDGES:
+                        used[edge[here, a]] = 1
+                        seen[there] += 1
+                    else:
+                        near[there] += VISITED
+                    if adjacent > 0 and fresh:
+                        for j in range(adjacent):
+                            near[beside[there, uint32(j)]] += 1
+                    path[e] = there
+                    arm[e] = 0
+                    state[e] = now
+                    weight[e] = factor
+                    if turns:
+                        last_way[e] = heading
+                    if statistics > 0:
+                        level[e, 0] = s0
+                    if statistics > 1:
+                        level[e, 1] = s1
+                    if spans:
+                        most[e, 0] = m0
+                        least[e, 0] = l0
+                        most[e, 1] = m1
+                        least[e, 1] = l1
+                    if ends == ON_TOP:
+                        crest[e] = max(crest[d], height[there])
+                    if monomers or pairs:
+                        spread[e] = far
+                    if pairs:
+                        norm[e] = wide
+                        for i in range(dimension):
+                            vector[e, uint32(i)] = vector[d, uint32(i)] + dual[there, uint32(i)]
+                    depth = n
         reg[DEPTH] = depth
         reg[NODES] += nodes
         return False

@@ -30,7 +30,9 @@ def bound(ground: RefinedGround) -> int:
     greatest = (ground.top + 2) ** 2 * max(ground.farthest, int(np.abs(ground.tables.square).max()), 1)
     most = (2**63 - 1) // (greatest * max(ground.states.orders) * (ground.arms + 1)) - 1
     if most < LEAST_SLICE:
-        raise InputError("distances too large for 64-bit slices", where=f"lattice {ground.series.lattice.name}")
+        raise InputError(
+            "distances too large for 64-bit slices", where=f"lattice {ground.series.lattice.name}"
+        )
     return min(SLICE_NODES, most)
 
 
@@ -92,7 +94,10 @@ class RefinedSearch(Slices):
             stack.level[0, place] = measure.first
             if measure.value is not None:
                 stack.most[0, place] = stack.least[0, place] = measure.value[rk.START]
-        marks.seen[rk.START] = 1
+        if self._traits.avoids == rk.EDGES:
+            marks.seen[rk.START] = 1
+        else:
+            marks.near[rk.START] += rk.VISITED
         if self._traits.adjacent:
             beside = ground.tables.beside[rk.START]
             marks.near[beside[beside > 0]] += 1
@@ -107,12 +112,20 @@ class RefinedSearch(Slices):
             stack.sums[...] = 0
             self._call(1)
             whole = self._reg(DEPTH) == depth  # the kernel has counted all that is below, and marked nothing
-            if int(stack.arm[depth]) != arm + 1 or self._reg(NODES) == 0 or (self._reg(NODES) > 1 and not whole):
-                if self._traits.closed or self._traits.ends == rk.AT_TARGET:  # too far away to come there in time
+            if (
+                int(stack.arm[depth]) != arm + 1
+                or self._reg(NODES) == 0
+                or (self._reg(NODES) > 1 and not whole)
+            ):
+                if (
+                    self._traits.closed or self._traits.ends == rk.AT_TARGET
+                ):  # too far away to come there in time
                     stack.sums[...] = 0
                     self.done = True
                     return
-                raise InputError("a prefix that the object cannot begin with", where=".".join(map(str, self.arms)))
+                raise InputError(
+                    "a prefix that the object cannot begin with", where=".".join(map(str, self.arms))
+                )
             self.nodes, stack.reg[NODES] = self._reg(NODES), 0
             if whole:
                 self.done = True
@@ -142,14 +155,18 @@ class RefinedSearch(Slices):
 
     def _images(self, depth: int, arm: int) -> int:
         ground, stack = self.ground, self._own
-        return int(ground.tables.images[int(stack.state[depth]), ground.patch.kind[int(stack.path[depth])], arm])
+        return int(
+            ground.tables.images[int(stack.state[depth]), ground.patch.kind[int(stack.path[depth])], arm]
+        )
 
     def _can_go(self, path: list[int], depth: int, arm: int) -> bool:
         ground = self.ground
         there = int(ground.patch.next[int(self._own.path[depth]), arm])
         if there == 0:
             return False
-        if (self._traits.closed or self._traits.ends == rk.AT_TARGET) and depth + 1 + int(ground.tables.home[there]) > ground.top:
+        if (self._traits.closed or self._traits.ends == rk.AT_TARGET) and depth + 1 + int(
+            ground.tables.home[there]
+        ) > ground.top:
             return False
         prefix = ground.root._replace(arms=(*path[:depth], arm))
         sites = twin.sites_along(ground.series.lattice, prefix)

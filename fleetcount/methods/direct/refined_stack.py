@@ -8,13 +8,15 @@ from typing import Any
 import numpy as np
 
 from fleetcount.methods.direct.kernels import REGISTERS
+from fleetcount.methods.direct.refined_kernel import VISITED
 
 Array = np.ndarray[Any, np.dtype[Any]]
 
 
 @dataclass
 class RefinedMarks:
-    """How often sites are visited, how many visited sites are beside them, and which edges are used."""
+    """How many visited sites are beside each site, with `VISITED` added where it is visited itself; and for objects
+    that avoid edges instead how often each site is visited, and which edges are used."""
 
     seen: Array
     near: Array
@@ -22,8 +24,9 @@ class RefinedMarks:
 
     @classmethod
     def of(cls, sites: int, edges: int) -> RefinedMarks:
-        """Nothing visited."""
+        """Nothing visited but the wall, where nothing can go."""
         seen, near = (np.zeros(sites + 1, dtype=np.int32) for _ in range(2))
+        near[0] = VISITED
         return cls(seen, near, np.zeros(edges + 1, dtype=np.uint8))
 
     def arrays(self) -> tuple[Array, ...]:
@@ -63,8 +66,9 @@ class RefinedStack:
             level, most, least, crest, last_way, spread, norm, vector, path, arm, state, weight, sums, reg
         )
 
-    def arrays(self) -> tuple[Array, ...]:
+    def arrays(self) -> tuple[Array | int, ...]:
         return (
             self.level, self.most, self.least, self.crest, self.last_way, self.spread, self.norm, self.vector,
-            self.path, self.arm, self.state, self.weight, self.sums, self.reg,
+            self.path, self.arm, self.state, self.weight, self.sums.reshape(len(self.sums), -1), self.reg,
+            self.sums.shape[2],
         )  # fmt: skip
