@@ -206,6 +206,8 @@ def _edges(lattice: Lattice, patch: Patch) -> tuple[Array, Array, int]:
         smaller = np.minimum(*there_and_back)
         there_and_back = (smaller, smaller)
     names = np.unique(there_and_back[0][following > 0])
+    if not len(names):  # the start alone: nothing leads anywhere
+        return _nothing(2), _nothing(2), 0
     numbers = []
     for name in there_and_back:
         number = np.minimum(np.searchsorted(names, name), len(names) - 1)
