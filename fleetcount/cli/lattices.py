@@ -30,12 +30,31 @@ def lattices(
         str | None, typer.Argument(metavar="[NAME]", help="A built-in lattice, or the path of a file.")
     ] = None,
     picture: Annotated[
-        Path | None, typer.Option(metavar="FILE.svg", help="Draw a patch of the lattice into this file.")
+        Path | None,
+        typer.Option(
+            metavar="FILE.svg",
+            help="Draw a patch of the lattice into this file, or what --object and --length name.",
+        ),
+    ] = None,
+    object_name: Annotated[
+        str | None,
+        typer.Option(
+            "--object",
+            metavar="OBJECT",
+            help="Draw the configurations that a count of this object counts, one of each kind, with how many images "
+            "it has; in two dimensions.",
+        ),
+    ] = None,
+    length: Annotated[int | None, typer.Option(metavar="N", help="Their length.")] = None,
+    start: Annotated[
+        str | None, typer.Option(metavar="SITE", help="Their start site. Default: one of each kind.")
     ] = None,
     as_json: Annotated[bool, typer.Option("--json", help="One JSON document on standard output.")] = False,
 ) -> None:
     """List the built-in lattices, or show one in full."""
     from fleetcount.lattice import catalogue
+
+    _check_together(picture, object_name, length, start)
 
     if name is None:
         if picture is not None:
@@ -49,24 +68,51 @@ def lattices(
             typer.echo("\n".join(_listing(every, shutil.get_terminal_size().columns)))
         return
     lattice = catalogue.find(name)
-    if picture is not None:
+    summary = ""
+    if picture is not None and object_name is not None and length is not None:
+        summary = _draw_configurations(lattice, object_name, length, start, picture)
+    elif picture is not None:
         _draw(lattice, picture)
     if as_json:
         typer.echo(json.dumps({"format": 1, "lattice": _full(lattice)}, indent=1))
     else:
         typer.echo("\n".join(_page(lattice, shutil.get_terminal_size().columns)))
         if picture is not None:
-            typer.echo(f"\ndrawn into {picture}")
+            typer.echo("\n" + (f"{summary}\n" if summary else "") + f"drawn into {picture}")
+
+
+def _check_together(
+    picture: Path | None, object_name: str | None, length: int | None, start: str | None
+) -> None:
+    """Options that mean nothing without each other."""
+    if picture is not None and picture.suffix.lower() != ".svg":
+        raise InputError(
+            "pictures are drawn in SVG", where=f"--picture {picture}", mend="give a file name ending in .svg"
+        )
+    if picture is None and (object_name is not None or length is not None or start is not None):
+        raise InputError("configurations are drawn into a file", mend="add --picture FILE.svg")
+    if (object_name is None) != (length is None) or (start is not None and object_name is None):
+        raise InputError("an object of which length?", mend="give --object and --length together")
+
+
+def _draw_configurations(
+    lattice: Lattice, object_name: str, length: int, start: str | None, path: Path
+) -> str:
+    from fleetcount.methods.direct.gallery import picture
+    from fleetcount.series.defining import define
+
+    text, summary = picture(define(lattice, object_name, start), length)
+    _write(path, text)
+    return summary
 
 
 def _draw(lattice: Lattice, path: Path) -> None:
     from fleetcount.lattice.svg import patch_svg
 
-    if path.suffix.lower() != ".svg":
-        raise InputError(
-            "pictures are drawn in SVG", where=f"--picture {path}", mend="give a file name ending in .svg"
-        )
-    text = patch_svg(lattice, _DRAWN_STEPS.get(lattice.dimension, 1) if lattice.periods > 1 else 6)
+    _write(path, patch_svg(lattice, _DRAWN_STEPS.get(lattice.dimension, 1) if lattice.periods > 1 else 6))
+
+
+def _write(path: Path, text: str) -> None:
     try:
         path.write_text(text, encoding="utf-8")
     except (OSError, ValueError) as error:

@@ -6,7 +6,7 @@ The coordinates are floats: they are drawn, never counted with.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from xml.sax.saxutils import escape
 
 from fleetcount.errors import InputError
@@ -67,8 +67,8 @@ def patch_svg(lattice: Lattice, steps: int, start: int = 0) -> str:
     )
 
 
-def _points(lattice: Lattice, nodes: Iterable[Node]) -> dict[Node, Point]:
-    """Where the sites are drawn, y downwards, the shortest step as long as `_STEP`."""
+def projection(lattice: Lattice) -> Callable[[Node], Point]:
+    """Where a site is drawn, y downwards, in units of the shortest step."""
     frame = _frame(lattice)
 
     def place(vector: Sequence[float]) -> Point:
@@ -76,11 +76,22 @@ def _points(lattice: Lattice, nodes: Iterable[Node]) -> dict[Node, Point]:
         up, right, depth = (*flat, 0.0, 0.0, 0.0)[:3] if lattice.dimension > 1 else (0.0, flat[0], 0.0)
         return right + _DEPTH[0] * depth, -up - _DEPTH[1] * depth
 
-    steps = [place([x / lattice.scale for x in lattice.step(arc)]) for arc in lattice.arcs]
-    unit = _STEP / min((math.hypot(*step) for step in steps if math.hypot(*step) > 1e-9), default=1.0)
-    raw = {node: place([float(x) for x in coordinates(lattice, node)]) for node in nodes}
+    steps = [math.hypot(*place([x / lattice.scale for x in lattice.step(arc)])) for arc in lattice.arcs]
+    unit = min((step for step in steps if step > 1e-9), default=1.0)
+
+    def at(node: Node) -> Point:
+        x, y = place([float(c) for c in coordinates(lattice, node)])
+        return x / unit, y / unit
+
+    return at
+
+
+def _points(lattice: Lattice, nodes: Iterable[Node]) -> dict[Node, Point]:
+    """Where the sites of a patch are drawn, the shortest step as long as `_STEP`."""
+    at = projection(lattice)
+    raw = {node: at(node) for node in nodes}
     left, top = (min(p[i] for p in raw.values()) for i in (0, 1))
-    return {node: ((x - left) * unit + _MARGIN, (y - top) * unit + _MARGIN) for node, (x, y) in raw.items()}
+    return {node: ((x - left) * _STEP + _MARGIN, (y - top) * _STEP + _MARGIN) for node, (x, y) in raw.items()}
 
 
 def _frame(lattice: Lattice) -> list[list[float]]:

@@ -56,7 +56,7 @@ class PublishedTable:
 
 
 class Reached(NamedTuple):
-    """The greatest length to which every term of a table agrees; the table's id and citation, whether it is published."""
+    """The greatest length to which every term of a table agrees; its id, its citation, whether it is published."""
 
     n: int
     table: str
