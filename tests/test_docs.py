@@ -10,7 +10,10 @@ from pathlib import Path
 import pytest
 import typer
 
-from fleetcount.cli.main import build
+from fleetcount.cli.main import answer, build
+from fleetcount.series import moments, statistics
+from fleetcount.series.objects import OBJECTS
+from fleetcount.series.region import SHORTHANDS
 
 ROOT = Path(__file__).resolve().parents[1]
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -23,24 +26,31 @@ def _blocks(language: str) -> list[str]:
 
 @pytest.fixture(scope="module")
 def folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """An empty folder with the lattice file that the README shows."""
+    """An empty folder with the lattice file and the series file that the README shows."""
     place = tmp_path_factory.mktemp("readme")
-    (lattice,) = _blocks("toml")
-    (place / "my-lattice.toml").write_text(lattice, encoding="utf-8")
+    for name, text in zip(("adsorbed.toml", "my-lattice.toml"), _blocks("toml"), strict=True):
+        assert f"`{name}`" in README
+        (place / name).write_text(text, encoding="utf-8")
     return place
 
 
-def test_the_console_examples_run_in_their_order(folder: Path) -> None:
-    """Each command line of the README ends with exit status 0 in an empty folder."""
+def test_the_console_examples_run_in_their_order(
+    folder: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Each command line of the README ends with exit status 0 in an empty folder, and prints what is shown of it."""
+    monkeypatch.chdir(folder)
+    monkeypatch.delenv("FLEETCOUNT_LEDGER", raising=False)
+    polynomials = next(body for body in _blocks("text") if body.startswith("#"))
     lines = [line[2:] for body in _blocks("console") for line in body.splitlines() if line.startswith("$ ")]
-    assert len(lines) >= 8
+    assert len(lines) >= 12
     for line in lines:
         words = line.split()
         assert words[0] == "fleetcount"
-        command = [sys.executable, "-c", "from fleetcount.cli.main import run; run()", *words[1:]]
-        done = subprocess.run(command, cwd=folder, capture_output=True, text=True, timeout=120, check=False)
-        assert done.returncode == 0, (line, done.stderr)
-        assert done.stdout.strip(), line
+        status, said = answer(build(), words[1:]), capsys.readouterr()
+        assert status == 0, (line, said.err)
+        assert said.out.strip(), line
+        if "--polynomials" in words:
+            assert said.out.startswith(polynomials)
 
 
 def test_the_lattice_example_is_the_honeycomb(folder: Path) -> None:
@@ -52,12 +62,24 @@ def test_the_lattice_example_is_the_honeycomb(folder: Path) -> None:
 
 
 def test_the_python_example_prints_what_it_says(folder: Path) -> None:
-    """The Python example runs as a plain script and prints the number in its comment."""
+    """The Python example runs as a plain script and prints what its comments say, but for those that break off."""
     (script,) = _blocks("python")
-    said = re.search(r"print\(table\[16\]\)\s+# (\d+)", script)
-    assert said is not None
-    done = subprocess.run([sys.executable, "-c", script], cwd=folder, capture_output=True, text=True, timeout=120, check=True)
-    assert done.stdout.splitlines()[0] == said.group(1)
+    done = subprocess.run(
+        [sys.executable, "-c", script], cwd=folder, capture_output=True, text=True, timeout=120, check=True
+    )
+    said = re.findall(r"^print\(.*?\) +# (.*)$", script, flags=re.MULTILINE)
+    printed = done.stdout.splitlines()
+    assert len(said) == len(printed) >= 6
+    for promise, line in zip(said, printed, strict=True):
+        if "..." not in promise:
+            assert line == promise.partition(", all ")[0]
+
+
+def test_objects_statistics_moments_and_regions_are_in_the_readme() -> None:
+    """Whatever can be counted is named in the README."""
+    named = [*OBJECTS, *statistics.MEANINGS, *moments.MEANINGS, *re.findall(r"[a-z]+", SHORTHANDS)]
+    for name in named:
+        assert re.search(rf"`{name}[`:]", README), name
 
 
 def test_every_command_is_in_the_readme() -> None:
