@@ -7,7 +7,7 @@ import os
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
-from fleetcount.errors import SeriesError, StoppedError
+from fleetcount.errors import InputError, SeriesError, StoppedError
 
 if TYPE_CHECKING:
     from distributed import Client
@@ -57,9 +57,15 @@ def count(
 
     if to is not None and (isinstance(to, bool) or not isinstance(to, int)):
         raise SeriesError(f"the greatest length is {to!r}", where="to", mend="give a whole number")
-    definition = asked(
-        lattice, object, to, start=start, end=end, by=_texts(by), moment=_texts(moment), region=region
-    )
+    if cores is not None and (
+        isinstance(cores, bool) or not isinstance(cores, int) or not 1 <= cores <= 1024
+    ):
+        raise InputError(f"{cores!r} cores", where="cores", mend="give a whole number from 1 to 1024")
+    for name, value in {"object": object, "start": start, "end": end, "region": region}.items():
+        if value is not None and not isinstance(value, str):
+            raise SeriesError(f"{value!r} is no text", where=name, mend="give it as the command line does")
+    names, sums = _texts("by", by), _texts("moment", moment)
+    definition = asked(lattice, object, to, start=start, end=end, by=names, moment=sums, region=region)
     if definition.to is None:
         raise SeriesError("up to which length?", where="to", mend="give a whole number")
     series = definition.series()
@@ -74,5 +80,10 @@ def count(
             raise KeyboardInterrupt(str(error)) from error
 
 
-def _texts(names: str | Sequence[str]) -> Sequence[str]:
-    return (names,) if isinstance(names, str) else names
+def _texts(name: str, texts: str | Sequence[str]) -> Sequence[str]:
+    """One text, or a sequence of them."""
+    if isinstance(texts, str):
+        return (texts,)
+    if not isinstance(texts, Sequence) or not all(isinstance(text, str) for text in texts):
+        raise SeriesError(f"{texts!r} are no names", where=name, mend="give a name, or a list of names")
+    return texts

@@ -60,7 +60,7 @@ def table(
         raise InputError(
             "--so-far goes with the text and with --json, whole", mend="leave the other option out"
         )
-    options_given = start or end or by or moment or region
+    options_given = any(given not in (None, []) for given in (start, end, by, moment, region))
     defined = None
     if object_name is not None or is_file(lattice) or options_given:
         definition = asked(

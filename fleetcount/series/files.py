@@ -115,7 +115,7 @@ def asked(
         mend = f"give an OBJECT: {', '.join(OBJECTS)}"
         raise InputError(f"{place[:60]!r} alone is no series", where="OBJECT", mend=mend)
     given = {"--start": start, "--end": end, "--by": by, "--moment": moment, "--region": region}
-    twice = [option for option, value in given.items() if value]
+    twice = [option for option, value in given.items() if value not in (None, [], ())]
     if twice:
         mend = "write it into the file, or give an OBJECT"
         raise InputError(f"{' and '.join(twice)} beside a series file", where=place, mend=mend)

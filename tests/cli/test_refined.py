@@ -101,6 +101,9 @@ def test_the_python_interface(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -
     assert package.count("s.toml").rows() == table.rows() == package.count(Path("s.toml"), to=6).rows()
     half = package.count("square", "walk", to=5, by=["visits", "contacts"], moment="end2", region="half")
     assert half.columns == ("n", "contacts", "visits", "count", "end2")
+    for wrong in ({"by": 3}, {"moment": ["end2", 3]}, {"end": (1, 0)}, {"region": 4}, {"to": "4"}):
+        with pytest.raises(SeriesError, match=next(iter(wrong))):
+            package.count("square", "walk", **{"to": 4, **wrong})  # type: ignore[arg-type]
     with pytest.raises(SeriesError, match="up to which length"):
         package.count("square", "walk")
     with pytest.raises(SeriesError, match="visits need a wall"):
