@@ -133,13 +133,16 @@ def _figure(
     thick = max(1.6, min(3.2, step / 8))
     line = f'stroke="{_INK}" stroke-width="{thick:.1f}" stroke-linecap="round" stroke-linejoin="round"'
     if closed:
-        yield f'<path class="path" d="{_loop(places, _BEND)}" fill="{_FILL}" fill-opacity="0.6" fill-rule="evenodd" {line}/>'
+        inside = f'fill="{_FILL}" fill-opacity="0.6" fill-rule="evenodd"'
+        yield f'<path class="path" d="{_loop(places, _BEND)}" {inside} {line}/>'
         if lattice.one_way:
             yield _head(places[0], places[1], 0.65, 3.2 * thick)
         return
     if len(places) > 1:
         yield f'<path class="path" d="{_line(places, _BEND)}" fill="none" {line}/>'
         yield _head(places[-2], places[-1], 1.0, 3.4 * thick)
+        if len(set(path)) < len(path):  # which way it goes is not seen from its ends
+            yield _head(places[0], places[1], 0.65, 3.2 * thick)
     yield f'<circle cx="{places[0][0]:.1f}" cy="{places[0][1]:.1f}" r="{1.5 * thick:.1f}" fill="{_START}"/>'
 
 

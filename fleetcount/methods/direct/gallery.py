@@ -9,7 +9,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 
 from fleetcount.errors import InputError
-from fleetcount.lattice.model import Lattice
+from fleetcount.lattice.model import Cell, Lattice
 from fleetcount.lattice.sheet import Drawn, check_drawable, sheet_svg
 from fleetcount.lattice.symmetry import Symmetry, group, site_orbits
 from fleetcount.methods.direct import twin
@@ -20,8 +20,8 @@ from fleetcount.series.figure import Point
 
 MOST_DRAWN = 60
 GREATEST_LENGTH = 40
-MOST_VISITED = 60_000
-"""Beginnings of configurations; more would take longer than one waits for a picture."""
+MOST_POINTS = 300_000
+"""Points of all beginnings of configurations; more would take longer than one waits for a picture."""
 
 Path = tuple[Point, ...]
 
@@ -89,7 +89,7 @@ def specimens(series: Series, length: int) -> list[Specimen]:
             where="--length",
             mend=f"give a number from {least} to {GREATEST_LENGTH}",
         )
-    budget = [MOST_VISITED]
+    budget = [MOST_POINTS]
     if series.rule.closed:
         return _sorted_out(_closed_paths(series, length, budget), 1, _closed_images(series.lattice))
     kinds = [(series.start, 1)] if series.start is not None else _kinds(series.lattice)
@@ -127,9 +127,16 @@ def _closed_images(lattice: Lattice) -> Callable[[Path], tuple[Path, ...]]:
 
 
 def _normal(lattice: Lattice, path: Path) -> Path:
-    """A closed path told from the point, in the sense and in the place that make it least."""
+    """A closed path told from its least point, whose cell is made 0, in the sense that makes it least."""
     senses = (path,) if lattice.one_way else (path, path[::-1])
-    return min(_moved(way[k:] + way[:k]) for way in senses for k in range(len(path)))
+    root = min(path, key=_order)
+    turned = (way[k:] + way[:k] for way in senses for k, point in enumerate(way) if point == root)
+    return _moved(min(turned))
+
+
+def _order(point: Point) -> tuple[Cell, int]:
+    """An order that translations keep."""
+    return point[1], point[0]
 
 
 def _moved(path: Path) -> Path:
@@ -162,14 +169,14 @@ def _grown(
 
     Args:
         away: how far points are from the start, if one more step is to lead back to it; what is not in it is too far.
-        budget: how many more may be visited.
+        budget: how many points may still be visited.
     """
     todo = [(root, tuple(twin.sites_along(series.lattice, root) or ()))]
     while todo:
         prefix, path = todo.pop()
-        budget[0] -= 1
+        budget[0] -= len(path)
         if budget[0] < 0:
-            what = f"too many to draw: {MOST_VISITED} beginnings do not hold every {series.object}"
+            what = f"too many of length {steps + series.rule.closed} to be sorted for a picture"
             raise InputError(what, where=series.title(), mend="give a smaller --length")
         left = steps - len(prefix.arms)
         if left == 0:
