@@ -71,9 +71,8 @@ def view(store: Store, series: Series, so_far: bool = False) -> View:
         raise TrustError("two answers for this unit do not agree", where=f"unit {disputed[0]}")
     final = reach(done[0]) if done else None
     sums = tables[0][1] if tables else Tally()
-    table = CoefficientTable(
-        series, final, sums, series.divisor, not unfinished and bool(done), head, partial
-    )
+    complete = final is not None and all(reach(row) <= final for row in unfinished)
+    table = CoefficientTable(series, final, sums, series.divisor, complete, head, partial)
     still_open = tuple(OpenReading(row, reach(row), store.census(row.reading)) for row in unfinished)
     return View(table, still_open, len(done) + len(unfinished))
 
