@@ -6,7 +6,7 @@ import contextlib
 import os
 from typing import TYPE_CHECKING, Any
 
-from fleetcount.errors import SeriesError, StoppedError
+from fleetcount.errors import InputError, SeriesError, StoppedError
 
 if TYPE_CHECKING:
     from distributed import Client
@@ -48,6 +48,10 @@ def count(
 
     if isinstance(to, bool) or not isinstance(to, int):
         raise SeriesError(f"the greatest length is {to!r}", where="to", mend="give a whole number")
+    if cores is not None and (
+        isinstance(cores, bool) or not isinstance(cores, int) or not 1 <= cores <= 1024
+    ):
+        raise InputError(f"{cores!r} cores", where="cores", mend="give a whole number from 1 to 1024")
     series = define(find(lattice), object, start)
     with contextlib.ExitStack() as stack:
         store: Any = ledger
