@@ -56,7 +56,8 @@ def test_the_python_example_prints_what_it_says(folder: Path) -> None:
     (script,) = _blocks("python")
     said = re.search(r"print\(table\[16\]\)\s+# (\d+)", script)
     assert said is not None
-    done = subprocess.run([sys.executable, "-c", script], cwd=folder, capture_output=True, text=True, timeout=120, check=True)
+    command = [sys.executable, "-c", script]
+    done = subprocess.run(command, cwd=folder, capture_output=True, text=True, timeout=120, check=True)
     assert done.stdout.splitlines()[0] == said.group(1)
 
 
