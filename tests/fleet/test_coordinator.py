@@ -62,7 +62,7 @@ def test_a_crew_that_behaves(tmp_path: Path) -> None:
     assert last.share == 1.0 and last.settled == last.units and last.remaining == 0.0
 
 
-@settings(max_examples=25, deadline=None)
+@settings(max_examples=15, deadline=None)
 @given(st.integers(0, 2**32))
 def test_answers_in_any_order(seed: int) -> None:
     """Answers late, twice, incomplete, lost or found again: the table is exact, no unit has two tallies."""
