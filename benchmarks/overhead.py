@@ -61,7 +61,9 @@ def core_time() -> float:
 
 
 def main() -> None:
-    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser = argparse.ArgumentParser(
+        description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
+    )
     parser.add_argument("--to", type=int, default=26)
     parser.add_argument("--cores", type=int, default=2)
     parser.add_argument("--ledger")
@@ -75,7 +77,9 @@ def main() -> None:
         print(f"count square walk --to 16, warm: {time.perf_counter() - began:.2f} s in all (at most 4)")
         child = [sys.executable, __file__, "--to", str(options.to), "--cores", str(options.cores)]
         ledger = options.ledger or f"{folder}/ledger.sqlite"
-        subprocess.run([*child, "--ledger", ledger], check=True, env={**os.environ, "FLEETCOUNT_BENCHMARK": "1"})
+        subprocess.run(
+            [*child, "--ledger", ledger], check=True, env={**os.environ, "FLEETCOUNT_BENCHMARK": "1"}
+        )
 
 
 def long_reading() -> None:
@@ -104,9 +108,12 @@ def long_reading() -> None:
     wall = ended - watch.times[first]
     core = used - watch.core[first]
     print(f"wall time of the long reading {wall:.2f} s, of which kernels {census.seconds:.2f} core seconds")
-    print(f"kernels / (cores x wall):      {census.seconds / (wall * options.cores):.3f} (at least 0.95 on an idle machine)")
+    share = census.seconds / (wall * options.cores)
+    print(f"kernels / (cores x wall):      {share:.3f} (at least 0.95 on an idle machine)")
     print(f"kernels / core time of ours:   {census.seconds / core:.3f} (at least 0.95)")
-    print(f"units {census.units}, nodes {census.nodes}, nodes a second a core {census.nodes / census.seconds:.3g}")
+    print(
+        f"units {census.units}, nodes {census.nodes}, nodes a second a core {census.nodes / census.seconds:.3g}"
+    )
 
 
 if __name__ == "__main__":

@@ -1,15 +1,15 @@
 """The one family of errors.
 
-    FleetcountError            what is wrong, where, what to do; exit status 2
-    ├── InputError             a definition, option or file from the user
-    │   ├── LatticeError       a lattice file fails a check
-    │   └── SeriesError        a series that makes no sense
-    ├── LedgerError            the ledger cannot be used: missing, locked, newer, unreachable, full
-    │   └── HeldError          another coordinator holds the series
-    ├── FleetError             the processes that count cannot be started or reached
-    ├── TrustError             stored numbers contradict each other; exit status 1
-    ├── StoppedError           interrupted, can be resumed; exit status 3
-    └── InternalError          a broken promise of our own code; exit status 4
+FleetcountError            what is wrong, where, what to do; exit status 2
+├── InputError             a definition, option or file from the user
+│   ├── LatticeError       a lattice file fails a check
+│   └── SeriesError        a series that makes no sense
+├── LedgerError            the ledger cannot be used: missing, locked, newer, unreachable, full
+│   └── HeldError          another coordinator holds the series
+├── FleetError             the processes that count cannot be started or reached
+├── TrustError             stored numbers contradict each other; exit status 1
+├── StoppedError           interrupted, can be resumed; exit status 3
+└── InternalError          a broken promise of our own code; exit status 4
 """
 
 from __future__ import annotations

@@ -16,7 +16,7 @@ from fleetcount.fleet.planning import divide_roots
 from fleetcount.fleet.snapshot import Observer, Snapshot
 from fleetcount.fleet.work import HandBack, HandOut, Task
 from fleetcount.ledger.states import State
-from fleetcount.ledger.store import RENEW_SECONDS, Lease, Store, UnitRow, Verdict
+from fleetcount.ledger.store import Lease, Store, UnitRow, Verdict
 from fleetcount.methods.face import Forecast
 
 _TICK = 0.1
@@ -29,7 +29,7 @@ LEDGER_BYTES = 1e9
 
 
 class Coordinator:
-    """Counts one reading to its end, or until it is told to stop."""
+    """Counts one reading to its end, or until it is told to stop; whoever gives it the lease keeps it alive."""
 
     def __init__(
         self,
@@ -46,7 +46,6 @@ class Coordinator:
         self._forecast, self._observer, self._stop = forecast, observer, stop
         rate = forecast.nodes / max(forecast.seconds, 1e-9)
         self._core = Core(budget_for(forecast.seconds, ledger_bytes), Pace(rate))
-        self._renewed = time.monotonic()
         self._shown = 0.0
         self._arrived: deque[tuple[str, HandBack | Exception]] = deque()
         self._unbooked: list[Bundle] = []
@@ -70,11 +69,11 @@ class Coordinator:
                 self._forecast,
                 max(1, self._crew.slots()),
                 0.1,
-                self._tick,
+                self._heed_stop,
             )
             self._look_again()
             while self._waiting or self._core.out:
-                self._tick()
+                self._heed_stop()
                 self._send()
                 self._receive(self._crew.collect(_TICK))
                 self._show()
@@ -94,13 +93,9 @@ class Coordinator:
             )
         self._store.finish_reading(self._lease, self._task.reading)
 
-    def _tick(self) -> None:
-        """Heed the stop flag, keep the lease."""
+    def _heed_stop(self) -> None:
         if self._stop.up:
             raise StoppedError("stopped")
-        if time.monotonic() - self._renewed >= RENEW_SECONDS:
-            self._lease = self._store.renew(self._lease)
-            self._renewed = time.monotonic()
 
     def _look_again(self) -> None:
         """Take the state of the reading from the ledger."""

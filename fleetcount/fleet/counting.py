@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import contextlib
 import platform
+import threading
 import time
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from fleetcount import host
-from fleetcount.errors import SeriesError, StoppedError
+from fleetcount.errors import HeldError, LedgerError, SeriesError, StoppedError
 from fleetcount.fleet.coordinator import LEDGER_BYTES, Coordinator
 from fleetcount.fleet.crew import Crew, OwnProcess
 from fleetcount.fleet.interrupt import Interrupts, StopFlag
@@ -20,7 +21,7 @@ from fleetcount.fleet.snapshot import Nobody, Observer
 from fleetcount.fleet.work import Task
 from fleetcount.ledger import tables
 from fleetcount.ledger.leasing import this_process
-from fleetcount.ledger.store import Lease, Machine, Store
+from fleetcount.ledger.store import RENEW_SECONDS, Lease, Machine, Store
 from fleetcount.methods import registry
 from fleetcount.methods.engine import versions
 from fleetcount.methods.face import Method
@@ -113,12 +114,12 @@ def _count(
         elif options.client is not None:
             from fleetcount.fleet.dask_crew import on_client
 
-            count.short_reading(forecast.shares, forecast.seconds)
+            count.short_reading(top, forecast.shares, forecast.seconds)
             count.reading(top, on_client(options.client, options.stop))
         else:
             with LocalFleet(options.cores or host.cores()) as fleet:
                 fleet.launch(series, method.name, top)
-                count.short_reading(forecast.shares, forecast.seconds)
+                count.short_reading(top, forecast.shares, forecast.seconds)
                 observer.stage(f"starting {fleet.cores} core{'s' * (fleet.cores > 1)}")
                 count.reading(top, fleet.crew(options.stop))
 
@@ -132,12 +133,20 @@ class _Count:
     options: Options
     interrupts: Interrupts
 
-    def short_reading(self, shares: tuple[float, ...], seconds: float) -> None:
-        """The lengths that a second reaches: the first terms at once, and a check of the long reading."""
+    def short_reading(self, top: int, shares: tuple[float, ...], seconds: float) -> None:
+        """The lengths that a second reaches: the first terms at once, and a check of the long reading.
+
+        One is enough: where the long reading was begun before, whatever is finished checks it; and one that was
+        left unfinished is as good as another that is a little longer or shorter, as forecasts vary.
+        """
         short = max(
             (n for n, nodes in enumerate(shares) if nodes / shares[-1] * seconds <= SHORT_SECONDS), default=0
         )
-        if not _covered(self.store, self.series, short):
+        rows = self.store.readings(self.series.digest)
+        left = [tables.reach(row) for row in rows if row.finished is None]
+        short = next((n for n in left if n < top and short - 2 <= n <= short + 1), short)
+        begun = top in left and len(left) < len(rows)
+        if not begun and not _covered(self.store, self.series, short):
             self.reading(short, OwnProcess(self.options.stop))
         self.options.observer.terms(tables.view(self.store, self.series).table)
 
@@ -162,12 +171,27 @@ class _Count:
 
 @contextlib.contextmanager
 def _lease(store: Store, series: Series, wait: float) -> Iterator[Lease]:
-    lease = store.take(series.digest, this_process(), wait)
+    """Hold the series. A thread renews the lease, also while a large ledger is read or the fleet starts."""
+    lease, done = store.take(series.digest, this_process(), wait), threading.Event()
+    keeper = threading.Thread(target=_keep, args=(store, lease, done), name="lease", daemon=True)
+    keeper.start()
     try:
         yield lease
     finally:
+        done.set()
+        keeper.join(timeout=1)
         with contextlib.suppress(Exception):  # it ends by itself; the error that brought us here matters more
             store.release(lease)
+
+
+def _keep(store: Store, lease: Lease, done: threading.Event) -> None:
+    while not done.wait(RENEW_SECONDS):
+        try:
+            store.renew(lease)
+        except HeldError:
+            return  # the next write says so
+        except LedgerError:
+            continue  # the next write says so, or all is well again
 
 
 def _note_machine(store: Store, series: Series) -> None:

@@ -32,7 +32,7 @@ def mounted(folder: Path, *options: str) -> Iterator[Path]:
         subprocess.run(["umount", str(folder)], check=True)
 
 
-def test_a_disk_that_fills_up(tmp_path: Path) -> None:
+def test_a_disk_that_fills_up(tmp_path: Path, fleetcount: Fleetcount) -> None:
     """A full disk stops the count with a clear line; after space is made the same line goes on to the exact table."""
     with mounted(tmp_path / "small", "-t", "tmpfs", "-o", "size=1m", "tmpfs") as small:
         ledger, ballast = small / "x.sqlite", small / "ballast"
@@ -49,8 +49,8 @@ def test_a_disk_that_fills_up(tmp_path: Path) -> None:
         )
         assert one.stdout == ""
         kept = tallies(ledger)
-        again = run(*arguments, cwd=tmp_path)
-        assert again.returncode == 2 and "full" in again.stderr.splitlines()[-1]
+        again = fleetcount(*arguments)
+        assert again.status == 2 and "full" in again.err.splitlines()[-1]
         ballast.unlink()
         subprocess.run(["mount", "-o", "remount,size=8m", str(small)], check=True)
         done = run(*arguments, cwd=tmp_path)

@@ -26,7 +26,7 @@ SQUARE_WALKS = [1, 4, 12, 36, 100, 284, 780, 2172, 5916, 16268, 44100]
 """Self-avoiding walks of the square lattice, OEIS A001411."""
 
 TOP = 8
-MANY_UNITS = Forecast(nodes=300.0, seconds=1e6, spread=1.0, shares=())
+MANY_UNITS = Forecast(nodes=100.0, seconds=1e6, spread=1.0, shares=())
 """So slow a machine that even a short count is divided into many units, and each bundle holds few."""
 
 Answered = tuple[str, HandBack | Exception]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import time
 from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
@@ -11,7 +12,9 @@ import pytest
 from hypothesis import given, settings
 
 from fleetcount.errors import FleetError, HeldError, LedgerError, StoppedError, TrustError
+from fleetcount.fleet import counting
 from fleetcount.fleet.interrupt import StopFlag
+from fleetcount.fleet.planning import open_reading
 from fleetcount.fleet.work import HandBack, HandOut, Task
 from fleetcount.ledger import leasing, tables
 from fleetcount.ledger.access import open_store
@@ -19,6 +22,8 @@ from fleetcount.ledger.memory import MemoryStore
 from fleetcount.ledger.record import TallyRecord, checksum
 from fleetcount.ledger.states import State
 from fleetcount.ledger.store import Answer, Lease, Store
+from fleetcount.methods.direct.method import DirectMethod
+from fleetcount.methods.face import Forecast
 from fleetcount.series.tally import Tally
 from tests.fleet.crews import (
     SQUARE_WALKS,
@@ -57,7 +62,7 @@ def test_a_crew_that_behaves(tmp_path: Path) -> None:
     assert last.share == 1.0 and last.settled == last.units and last.remaining == 0.0
 
 
-@settings(max_examples=25, deadline=None)
+@settings(max_examples=15, deadline=None)
 @given(st.integers(0, 2**32))
 def test_answers_in_any_order(seed: int) -> None:
     """Answers late, twice, incomplete, lost or found again: the table is exact, no unit has two tallies."""
@@ -299,3 +304,52 @@ def test_a_doctored_reading(first: bool) -> None:
 def task_of(store: Store) -> Task:
     """The one reading, to go on with."""
     return Task.of(square_walks(), only_reading(store), "direct", TOP)
+
+
+def test_one_short_reading_is_enough(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A count that goes on takes up the short reading it had begun, and begins no other once it has the long one."""
+    monkeypatch.setattr(counting, "OWN_PROCESS_SECONDS", 0.0)
+    monkeypatch.setattr(counting, "SHORT_SECONDS", 0.0005)
+
+    class Fleet(Crew):
+        def __init__(self, cores: int) -> None:
+            super().__init__(cores)
+
+        def __enter__(self) -> Fleet:
+            return self
+
+        def __exit__(self, *exc: object) -> None: ...
+
+        def launch(self, *more: object) -> None: ...
+
+        def crew(self, stop: StopFlag) -> Crew:
+            return self
+
+    monkeypatch.setattr(counting, "LocalFleet", Fleet)
+    store = MemoryStore()
+    lease = held(store)
+    short = open_reading(store, lease, square_walks(), "direct", 9)
+    store.release(lease)
+    shares = tuple(3.0**n for n in range(16))
+    forecast = Forecast(shares[15], 0.0004 * shares[15] / shares[10], 1.0, shares)
+    monkeypatch.setattr(DirectMethod, "forecast", lambda *_: forecast)
+    table = counting.count_series(store, square_walks(), 15, counting.Options(cores=1))
+    assert table[15] == 6416596
+    rows = store.readings(square_walks().digest)
+    assert rows[0].reading == short.reading
+    assert [row.lengths for row in rows] == ["0-9", "0-15"] and all(row.finished for row in rows)
+
+
+def test_the_lease_is_kept_while_nothing_is_written(monkeypatch: pytest.MonkeyPatch) -> None:
+    """However long it takes to read a ledger or to start a fleet, the lease is renewed meanwhile, and given up at the
+    end."""
+    monkeypatch.setattr(counting, "RENEW_SECONDS", 0.02)
+    store, ends = MemoryStore(), set[int]()
+    store.release(held(store))
+    with counting._lease(store, square_walks(), 0.0):
+        for _ in range(40):
+            time.sleep(0.02)
+            holder = store.holder(square_walks().digest)
+            assert holder is not None
+            ends.add(holder[1])
+    assert len(ends) > 3 and store.holder(square_walks().digest) is None

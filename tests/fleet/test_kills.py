@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import os
 import random
 import time
 import uuid
@@ -16,10 +17,11 @@ import pytest
 from fleetcount.lattice.catalogue import find
 from fleetcount.ledger import tables
 from fleetcount.ledger.access import open_store
+from fleetcount.ledger.leasing import this_process
 from fleetcount.ledger.states import State
 from fleetcount.series.defining import define
 from fleetcount.trust import published
-from tests.fleet.program import Running, few_seconds, line, query, running, tallies, units_out, wait_for
+from tests.fleet.program import ROOT, Running, few_seconds, line, query, running, tallies, units_out, wait_for
 
 NAME = "fleetcount.sqlite"
 FEW, MANY = 5, 20
@@ -42,7 +44,7 @@ def finished(ledger: Path) -> None:
             settled = states[State.COUNTED].units + states[State.DIVIDED].units
             assert merged.complete and merged.tallies == settled
         reached = [tables.reach(row) for row in store.readings(series.digest) if row.finished]
-        assert sorted(set(reached)) == sorted(reached) and reached[-1] == few_seconds(), (
+        assert sorted(set(reached)) == sorted(reached) and max(reached) == few_seconds(), (
             "a reading was begun twice"
         )
 
@@ -173,3 +175,52 @@ def test_a_killed_worker(tmp_path: Path) -> None:
 def test_a_worker_killed_many_times(tmp_path: Path) -> None:
     """The same twenty times."""
     kill_workers(tmp_path, MANY, seed=4)
+
+
+LONG_READING = "units JOIN readings ON readings.id = units.reading WHERE readings.lengths = '0-{}'"
+POISON = """
+import os, signal, sys
+if "fleetcount.fleet.worker" in sys.orig_argv:
+    import fleetcount.fleet.work as work
+    honest = work.answer_unit
+    def answer_unit(task, method, key, *more):
+        if key == os.environ["POISON"]:
+            os.kill(os.getpid(), signal.SIGKILL)
+        return honest(task, method, key, *more)
+    work.answer_unit = answer_unit
+"""
+
+
+@pytest.mark.long
+@pytest.mark.timeout(600)
+def test_a_unit_that_kills_its_process(tmp_path: Path) -> None:
+    """A unit over which every process dies is barred in the end, all else is counted; where it kills no more, and is
+    let in again, the count is completed."""
+    ledger = tmp_path / NAME
+    long_reading = LONG_READING.format(few_seconds())
+    counted = f"SELECT 1 FROM {long_reading} AND units.state = 'counted'"
+    waiting = f"SELECT units.key FROM {long_reading} AND units.state = 'waiting' ORDER BY expected LIMIT 1"
+    with running(*line(), cwd=tmp_path) as one:
+        wait_for(lambda: query(ledger, counted))
+        one.process.kill()
+        one.wait()
+    ((key,),) = query(ledger, waiting)
+    folder = tmp_path / "poison"
+    folder.mkdir()
+    (folder / "sitecustomize.py").write_text(POISON)
+    with running(
+        *line(), cwd=tmp_path, env={"POISON": key, "PYTHONPATH": f"{folder}{os.pathsep}{ROOT}"}
+    ) as one:
+        status = one.wait()
+    assert status == 1, one.stderr
+    last = one.stderr.splitlines()[-1]
+    assert last.startswith(f"fleetcount: unit {key}: barred after 3 failures") and "died each time" in last
+    assert set(query(ledger, "SELECT key FROM units WHERE state NOT IN ('counted', 'divided')")) == {(key,)}
+    with open_store(str(ledger)) as store:
+        series = define(find("square"), "walk", None)
+        lease = store.take(series.digest, this_process())
+        store.readmit(lease, store.readings(series.digest)[-1].reading, [key])
+        store.release(lease)
+    with running(*line(), cwd=tmp_path) as one:
+        assert one.wait() == 0, one.stderr
+    finished(ledger)

@@ -19,23 +19,24 @@ from fleetcount.ledger.access import open_store
 from fleetcount.ledger.states import State
 from fleetcount.ledger.store import Share
 from fleetcount.series.defining import define
-from tests.fleet.program import Running, few_seconds, line, query, run, running, units_out, wait_for
+from tests.cli.conftest import Fleetcount
+from tests.fleet.program import Running, few_seconds, line, query, running, units_out, wait_for
 from tests.fleet.test_kills import NAME, connected, finished, published_walks
 
 
-def test_the_second_says_who_holds_it(tmp_path: Path) -> None:
+def test_the_second_says_who_holds_it(tmp_path: Path, fleetcount: Fleetcount) -> None:
     """A second coordinator is told which process on which machine holds the series and until when; it waits only
     where that is asked for, and then prints the same table. Another series can be counted meanwhile."""
     with running(*line(), cwd=tmp_path) as first:
         wait_for(lambda: units_out(tmp_path / NAME))
         with running(*line(), "--wait", "--json", cwd=tmp_path) as waiting:
-            refused = run(*line(), cwd=tmp_path)
-            assert refused.returncode == 2 and refused.stdout == ""
-            (said,) = [text for text in refused.stderr.splitlines() if text.startswith("fleetcount:")]
+            refused = fleetcount(*line())
+            assert (refused.status, refused.out) == (2, "")
+            (said,) = [text for text in refused.err.splitlines() if text.startswith("fleetcount:")]
             assert f"process {first.process.pid} on {host.machine_name()}" in said
             assert re.search(r"until \d\d:\d\d:\d\d", said) and "--wait" in said
-            other = run("count", "square", "polygon", "--to", "8", "--plain", cwd=tmp_path)
-            assert other.returncode == 0 and other.stdout.endswith("8 7\n"), other.stderr
+            other = fleetcount("count", "square", "polygon", "--to", "8", "--plain")
+            assert other.status == 0 and other.out.endswith("8 7\n"), other.err
             assert first.wait() == 0, first.stderr
             assert waiting.wait() == 0, waiting.stderr
     assert json.loads(waiting.stdout)["rows"] == [[n, str(c)] for n, c in published_walks().items()]
@@ -73,7 +74,7 @@ def test_one_that_stands_still(tmp_path: Path) -> None:
     finished(ledger)
 
 
-def test_a_postgresql_ledger(tmp_path: Path, postgres: str) -> None:
+def test_a_postgresql_ledger(tmp_path: Path, postgres: str, fleetcount: Fleetcount) -> None:
     """The main job on PostgreSQL: killed, gone on with by the same line, shown, and printed as published."""
     series = define(find("square"), "walk", None)
     env = {"FLEETCOUNT_LEDGER": postgres}
@@ -95,11 +96,11 @@ def test_a_postgresql_ledger(tmp_path: Path, postgres: str) -> None:
         wait_for(lambda: quietly() and [w for w in one.workers() if connected(w)])
         one.process.kill()
         one.wait()
-    shown = json.loads(run("progress", "--json", cwd=tmp_path, env=env).stdout)
+    shown = json.loads(fleetcount("progress", "--json", "--ledger", postgres).out)
     assert 0 < shown["series"][0]["readings"][-1]["share_done"] < 1
     with running(*line(), "--json", cwd=tmp_path, env=env) as one:
         assert one.wait() == 0, one.stderr
-    table = run("table", "square", "walk", "--json", cwd=tmp_path, env=env)
-    assert json.loads(table.stdout) == json.loads(one.stdout)
-    assert json.loads(table.stdout)["rows"] == [[n, str(c)] for n, c in published_walks().items()]
+    table = json.loads(fleetcount("table", "square", "walk", "--json", "--ledger", postgres).out)
+    assert table == json.loads(one.stdout)
+    assert table["rows"] == [[n, str(c)] for n, c in published_walks().items()]
     assert not list(tmp_path.glob("*.sqlite*"))
