@@ -21,15 +21,16 @@ Place = tuple[Fraction, ...]
 
 
 @st.composite
-def small_lattices(draw: st.DrawFn, one_way: bool | None = None) -> Lattice:
+def small_lattices(draw: st.DrawFn, one_way: bool | None = None, dimension: int | None = None) -> Lattice:
     """Lattices in 1 to 3 dimensions with 1 to 4 sites a cell and at most 6 arms out of each.
 
     Args:
         one_way: True for lattices with one-way arcs, False for those without, None for both.
+        dimension: the only one; None for any.
 
     About half of them are drawn so that some reflections and rotations keep them.
     """
-    dimension = draw(st.integers(1, 3))
+    dimension = draw(st.integers(1, 3)) if dimension is None else dimension
     periods = draw(st.one_of(st.just(dimension), st.integers(1, dimension)))
     directed = draw(st.booleans()) if one_way is None else one_way
     places = draw(_places(dimension, periods))
