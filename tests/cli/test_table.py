@@ -15,7 +15,7 @@ from fleetcount.fleet import counting
 from fleetcount.fleet.interrupt import StopFlag
 from fleetcount.lattice.catalogue import find
 from fleetcount.ledger.access import open_store
-from fleetcount.series.definition import define
+from fleetcount.series.defining import define
 from tests.cli.conftest import Answer, Fleetcount
 from tests.fleet.crews import SQUARE_WALKS, Crew, held, set_to_work
 

@@ -2,4 +2,6 @@
 
 from fleetcount.series.objects.rule import CountedObject
 
-RULE = CountedObject("bridge", 1, "walks above their start that end at their highest level", ends="on top", above_start=True)
+RULE = CountedObject(
+    "bridge", 1, "walks above their start that end at their highest level", ends="on top", above_start=True
+)

@@ -2,4 +2,10 @@
 
 from fleetcount.series.objects.rule import CountedObject
 
-RULE = CountedObject("closed-trail", 1, "closed trails, up to translation, start and sense, per cell", closed=True, avoids="edges")
+RULE = CountedObject(
+    "closed-trail",
+    1,
+    "closed trails, up to translation, start and sense, per cell",
+    closed=True,
+    avoids="edges",
+)

@@ -2,4 +2,6 @@
 
 from fleetcount.series.objects.rule import CountedObject
 
-RULE = CountedObject("neighbour-avoiding", 1, "walks whose sites are adjacent only if consecutive", avoids="neighbours")
+RULE = CountedObject(
+    "neighbour-avoiding", 1, "walks whose sites are adjacent only if consecutive", avoids="neighbours"
+)
