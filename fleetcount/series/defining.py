@@ -10,7 +10,7 @@ from fleetcount.lattice.symmetry import all_alike
 from fleetcount.series import moments, statistics
 from fleetcount.series.definition import Series
 from fleetcount.series.objects import CountedObject, find_object
-from fleetcount.series.region import Wall, contains, moved, region, shape, shorthand
+from fleetcount.series.region import Wall, contains, moved, region, settled, shape, shorthand
 from fleetcount.series.statistics import Statistic
 
 MOST_STATISTICS = 2
@@ -46,6 +46,8 @@ def define(
     moved_by, site = _place(lattice, start, "--start")
     bounds = region(lattice, [*(shorthand(lattice, region_name) if region_name else ()), *walls])
     around = moved(bounds, moved_by)
+    if rule.closed and shape(lattice, around) != "other":
+        around = settled(lattice, around)
     for name in moment:
         reason = moments.refusal(moments.find(name), lattice, rule)
         if reason:

@@ -79,6 +79,35 @@ def moved(walls: Iterable[Wall], cell: Cell) -> tuple[Wall, ...]:
     return tuple(sorted(Wall(w.form, w.bound - sum(map(operator.mul, w.form, cell))) for w in walls))
 
 
+def settled(lattice: Lattice, walls: Sequence[Wall]) -> tuple[Wall, ...]:
+    """The same for all regions that are moved copies of each other: where nothing else says where it lies.
+
+    The bounds are taken to the least values, not below 0, that moving by periods can give them, one after another.
+    """
+    rows = [[w.form[axis] for w in walls] for axis in range(lattice.periods)]
+    bounds = [w.bound for w in walls]
+    for column in reversed(range(len(walls))):
+        step = _step_along(rows, column)
+        times = bounds[column] // step[column] if step else 0
+        bounds = [b - times * s for b, s in zip(bounds, step, strict=True)] if step else bounds
+    return tuple(Wall(w.form, bound) for w, bound in zip(walls, bounds, strict=True))
+
+
+def _step_along(rows: list[list[int]], column: int) -> list[int] | None:
+    """By Euclid's algorithm, in place, one row alone keeps an entry in a column; that row, taken out and positive."""
+    while True:
+        left = sorted((row for row in rows if row[column]), key=lambda row: abs(row[column]))
+        if not left:
+            return None
+        least = left[0]
+        if len(left) == 1:
+            rows.remove(least)
+            return least if least[column] > 0 else [-x for x in least]
+        for row in left[1:]:
+            times = row[column] // least[column]
+            row[:] = [x - times * y for x, y in zip(row, least, strict=True)]
+
+
 def shorthand(lattice: Lattice, text: str) -> tuple[Wall, ...]:
     """The walls of a name: half, quarter, orthant, wedge, slab:W, box:A,B,..., tube:A,...
 
