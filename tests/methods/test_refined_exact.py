@@ -11,6 +11,8 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from fleetcount.errors import InputError
+from fleetcount.lattice import catalogue
+from fleetcount.methods.direct import keys, refined_reach
 from fleetcount.methods.direct.kernels import NODES
 from fleetcount.methods.direct.keys import Prefix
 from fleetcount.methods.direct.method import Endless
@@ -19,6 +21,7 @@ from fleetcount.methods.direct.refined_search import RefinedSearch, bound
 from fleetcount.methods.direct.slices import LEAST_SLICE, SLICE_NODES
 from fleetcount.series.defining import define
 from fleetcount.series.definition import Series
+from fleetcount.series.forms import dot
 from tests.methods import lattices
 from tests.methods.refined import by_kernel, interpreted, one_width, refined_series
 from tests.methods.splitting import METHOD, in_pieces, slices_of
@@ -113,3 +116,39 @@ def test_sums_are_python_integers() -> None:
     assert found
     assert {type(x) for arms, factor in found for x in (*arms, factor)} == {int}
     assert {type(x) for row in searching.tally().rows.items() for part in row for x in part} == {int}
+
+
+@pytest.mark.parametrize(
+    ("name", "kind", "top", "words", "reason"),
+    (
+        ("square", "walk", 20, {"by": ["span:1023,1022", "span:1021,-1"]}, "GB of memory"),
+        ("square", "walk", 10**9, {"by": ["contacts"]}, "GB or more of memory"),
+        ("ladder", "walk", 8000, {"moment": ["gyration2"]}, "too large for 64-bit slices"),
+        ("ladder", "walk", -1, {"moment": ["gyration2"]}, "negative"),
+    ),
+)
+def test_absurd_lengths(name: str, kind: str, top: int, words: dict[str, Any], reason: str) -> None:
+    """Sums that do not fit, into memory or into 64 bits, are refused before anything is counted, in one line."""
+    series = define(catalogue.find(name), kind, **words)
+    with pytest.raises(InputError, match=reason) as error:
+        METHOD.check_reach(series, top)
+    assert "\n" not in str(error.value)
+
+
+@settings(max_examples=40, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+@given(refined_series(small_lattices()), st.integers(1, 8))
+def test_what_passes_the_check_can_be_counted(series: Series, top: int) -> None:
+    """The values that a check expects of a statistic are no fewer than a ground has, nor are the distances."""
+    if series.plain:
+        return
+    METHOD.check_reach(series, top)
+    for unit in METHOD.roots(series, range(top + 1)):
+        root = keys.parse(unit.key)
+        ground = refined_ground(series, root, top)
+        longest = max(
+            dot(series.lattice, step, step) for step in map(series.lattice.step, series.lattice.arcs)
+        )
+        assert ground.farthest <= top**2 * longest
+        for one, measure in zip(series.statistics, ground.measures, strict=True):
+            expected = refined_reach._values(series, one, top, ground.patch.sites)
+            assert measure.size <= expected

@@ -50,10 +50,12 @@ class DirectMethod:
 
     def check_reach(self, series: Series, top: int) -> None:
         """See `Method.check_reach`; nothing is built."""
-        from fleetcount.methods.direct import ground, search  # compiled code is imported late
+        from fleetcount.methods.direct import ground, refined_reach, search  # compiled code is imported late
 
         roots = self._roots(series, rooting.rootings(series)[0])
         ground.check_reach(series, roots, top)
+        if not series.plain:
+            refined_reach.check_reach(series, roots, top)
         for root in roots:
             order = len(kept_symmetries(series, root.start))
             search.check_bound(series.lattice.name, ground.width(series.lattice), order)
@@ -151,12 +153,16 @@ class DirectMethod:
     def _rooted_at_least(self, series: Series, top: int) -> bool:
         """Which of the ways to root closed objects visits the fewest nodes at this reach."""
         ways = rooting.rootings(series)
-        return ways[0] if len(ways) == 1 else min(ways, key=lambda least: _calibrate(series, least).total(top))
+        return (
+            ways[0] if len(ways) == 1 else min(ways, key=lambda least: _calibrate(series, least).total(top))
+        )
 
     def _understood(self, series: Series, key: str, top: int) -> tuple[keys.Prefix, SymmetryStates]:
         """The prefix that a key names on this lattice, up to this length, and the symmetry states of its start."""
         prefix = keys.parse(key)
-        known = prefix.least in rooting.rootings(series) and prefix.root() in _known_roots(series, prefix.least)
+        known = prefix.least in rooting.rootings(series) and prefix.root() in _known_roots(
+            series, prefix.least
+        )
         path = twin.sites_along(series.lattice, prefix) if known else None
         if path is None or len(prefix.arms) > top:
             raise InputError(f"no unit of {series.title()} up to length {top}", where=key)

@@ -9,29 +9,45 @@ import numpy as np
 from fleetcount.errors import InputError
 from fleetcount.methods.direct import refined_kernel as rk
 from fleetcount.methods.direct import twin
+from fleetcount.methods.direct.ground import width
 from fleetcount.methods.direct.kernels import DEPTH, FLOOR, NODES, TOP
 from fleetcount.methods.direct.refined_ground import RefinedGround, traits_of
 from fleetcount.methods.direct.refined_stack import RefinedMarks, RefinedStack
 from fleetcount.methods.direct.slices import LEAST_SLICE, SLICE_NODES, Slices
 from fleetcount.series import moments
+from fleetcount.series.definition import Series
 from fleetcount.series.tally import Place, Tally
 
 
 def bound(ground: RefinedGround) -> int:
+    """The most nodes of a slice on a ground; see `nodes_within`."""
+    squared = max(ground.farthest, int(np.abs(ground.tables.square).max()))
+    return nodes_within(ground.series, ground.top, squared, max(ground.states.orders))
+
+
+def nodes_within(series: Series, top: int, squared: int, order: int) -> int:
     """The most nodes of a slice for which no 64-bit sum can overflow.
 
-    A node adds at most one object for itself and, if objects close, one for each of its arms. Each adds to a sum at
-    most its weight, which never exceeds the order of the group of symmetries that are used, times the greatest value
-    of a moment: (n + 1)^2 times the greatest squared distance for gyration2, less for the others.
+    An object adds to a sum at most its weight, which never exceeds the order of the group of symmetries that are
+    used, times the greatest value of a moment: (n + 1)^2 times the greatest squared distance for gyration2, less for
+    the others. A node adds one object for itself and, if objects close, at most one for each of its arms. Others may
+    be taken on, arm by arm, when the limit is reached: at most arms * (arms + 1) nodes of one object each, which is
+    less than what the arms of so many nodes are allowed for here.
+
+    Args:
+        squared: greatest squared distance or height from the start, in the units that the kernel sums.
+        order: symmetries that are used.
 
     Raises:
         InputError: a slice would be too short to be useful.
     """
-    greatest = (ground.top + 2) ** 2 * max(ground.farthest, int(np.abs(ground.tables.square).max()), 1)
-    most = (2**63 - 1) // (greatest * max(ground.states.orders) * (ground.arms + 1)) - 1
+    greatest = (top + 2) ** 2 * max(squared, 1) if series.moments else 1
+    most = (2**63 - 1) // (greatest * order * (width(series.lattice) + 1)) - 1
     if most < LEAST_SLICE:
         raise InputError(
-            "distances too large for 64-bit slices", where=f"lattice {ground.series.lattice.name}"
+            f"moments of length {top} are too large for 64-bit slices",
+            where=f"lattice {series.lattice.name}",
+            mend="ask for a smaller length",
         )
     return min(SLICE_NODES, most)
 
