@@ -45,9 +45,7 @@ PerSite = Annotated[
 ]
 ObjectName = Annotated[
     str | None,
-    typer.Argument(
-        metavar="OBJECT", help=f"What to count. {_glossary(OBJECTS_MEAN)}. Left out with a file."
-    ),
+    typer.Argument(metavar="OBJECT", help=f"What to count. {_glossary(OBJECTS_MEAN)}. Left out with a file."),
 ]
 Start = Annotated[
     str | None,

@@ -67,17 +67,28 @@ def define(
 def _statistics(by: Sequence[str], lattice: Lattice) -> tuple[Statistic, ...]:
     found = sorted({statistics.parse(text, lattice) for text in by})
     if len(found) > MOST_STATISTICS:
-        raise SeriesError(f"{len(found)} statistics", where="--by", mend=f"at most {MOST_STATISTICS} at a time")
+        raise SeriesError(
+            f"{len(found)} statistics", where="--by", mend=f"at most {MOST_STATISTICS} at a time"
+        )
     return tuple(found)
 
 
 def _is_directed(rule: CountedObject, refined: Sequence[Statistic], names: Sequence[str]) -> bool:
     """Whether something names a direction, so that alike sites may still give different numbers."""
-    return rule.above_start or any(s.name in _DIRECTED for s in refined) or bool({"height2", "along2"} & set(names))
+    return (
+        rule.above_start
+        or any(s.name in _DIRECTED for s in refined)
+        or bool({"height2", "along2"} & set(names))
+    )
 
 
 def _start(
-    lattice: Lattice, rule: CountedObject, text: str | None, site: int | None, walls: Sequence[Wall], directed: bool
+    lattice: Lattice,
+    rule: CountedObject,
+    text: str | None,
+    site: int | None,
+    walls: Sequence[Wall],
+    directed: bool,
 ) -> int | None:
     if rule.closed and shape(lattice, walls) != "other":
         if text is not None:
@@ -89,7 +100,9 @@ def _start(
         return 0
     if walls or directed:
         names = ", ".join(s.name for s in lattice.sites)
-        raise SeriesError("the sites are not all alike", where=f"lattice {lattice.name}", mend=f"--start one of {names}")
+        raise SeriesError(
+            "the sites are not all alike", where=f"lattice {lattice.name}", mend=f"--start one of {names}"
+        )
     return None
 
 
@@ -97,12 +110,16 @@ def _end(lattice: Lattice, rule: CountedObject, text: str | None, moved_by: Cell
     if text is None:
         return None
     if not rule.plain or rule.closed:
-        raise SeriesError(f"a {rule.name} with a given end cannot be counted", where="--end", mend="count walks")
+        raise SeriesError(
+            f"a {rule.name} with a given end cannot be counted", where="--end", mend="count walks"
+        )
     cell, site = _place(lattice, text, "--end")
     if site is None:
         if len(lattice.sites) > 1:
             names = ", ".join(s.name for s in lattice.sites)
-            raise SeriesError("which site of that cell?", where=f"--end {text}", mend=f"write {text}:SITE, one of {names}")
+            raise SeriesError(
+                "which site of that cell?", where=f"--end {text}", mend=f"write {text}:SITE, one of {names}"
+            )
         site = 0
     return site, tuple(a - b for a, b in zip(cell, moved_by, strict=True))
 
@@ -120,10 +137,14 @@ def _place(lattice: Lattice, text: str | None, where: str) -> tuple[Cell, int | 
         cell = tuple(int(x) for x in cell_text.split(","))
     except ValueError:
         raise SeriesError(
-            f"no site named {text!r}", where=f"{where}, lattice {lattice.name}", mend=f"its sites: {', '.join(names)}"
+            f"no site named {text!r}",
+            where=f"{where}, lattice {lattice.name}",
+            mend=f"its sites: {', '.join(names)}",
         ) from None
     if len(cell) != lattice.periods or max(map(abs, cell)) > _FARTHEST:
-        raise SeriesError(f"{cell_text!r} is no cell", where=where, mend=f"give {lattice.periods} whole numbers like 0,3")
+        raise SeriesError(
+            f"{cell_text!r} is no cell", where=where, mend=f"give {lattice.periods} whole numbers like 0,3"
+        )
     if name and name not in names:
         raise SeriesError(f"no site named {name!r}", where=where, mend=f"its sites: {', '.join(names)}")
     return cell, names.index(name) if name else None
@@ -132,7 +153,9 @@ def _place(lattice: Lattice, text: str | None, where: str) -> tuple[Cell, int | 
 def _check_places(series: Series) -> None:
     lattice, here = series.lattice, (0,) * series.lattice.periods
     if series.start is not None and not contains(lattice, series.walls, series.start, here):
-        raise SeriesError("the region does not hold the start", where=series.title(), mend="give another --start")
+        raise SeriesError(
+            "the region does not hold the start", where=series.title(), mend="give another --start"
+        )
     if series.end is not None and not contains(lattice, series.walls, *series.end):
         raise SeriesError("the region does not hold the end", where=series.title(), mend="give another --end")
     if series.end is not None and series.end == (series.start, here):

@@ -9,7 +9,7 @@ from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
-from itertools import combinations
+from itertools import combinations, pairwise
 
 from fleetcount.lattice.model import Cell, Lattice
 from fleetcount.series import forms, moments
@@ -52,7 +52,7 @@ class Figure:
     @cached_property
     def steps(self) -> tuple[Vector, ...]:
         ring = [*self.positions, *self.positions[:1]] if self.closed else list(self.positions)
-        return tuple(tuple(b - a for a, b in zip(p, q, strict=True)) for p, q in zip(ring, ring[1:], strict=False))
+        return tuple(tuple(b - a for a, b in zip(p, q, strict=True)) for p, q in pairwise(ring))
 
     def place(self) -> tuple[int, ...]:
         """The length, then the values of the statistics."""
@@ -84,7 +84,7 @@ def adjacent(lattice: Lattice, a: Point, b: Point) -> bool:
 def _contacts(figure: Figure, _: Statistic) -> Iterator[int]:
     points = figure.points
     ring = [*points, *points[:1]] if figure.closed else list(points)
-    joined = {frozenset(pair) for pair in zip(ring, ring[1:], strict=False)}
+    joined = {frozenset(pair) for pair in pairwise(ring)}
     pairs = (frozenset(pair) for pair in combinations(set(points), 2) if adjacent(figure.lattice, *pair))
     yield sum(pair not in joined for pair in pairs)
 
@@ -133,7 +133,7 @@ def _height(figure: Figure, _: Statistic) -> Iterator[int]:
 
 def _area(figure: Figure, _: Statistic) -> Iterator[int]:
     ring = [*figure.positions, figure.positions[0]]
-    twice = sum(forms.cross(p, q) for p, q in zip(ring, ring[1:], strict=False))
+    twice = sum(forms.cross(p, q) for p, q in pairwise(ring))
     unit = area_unit(figure.lattice)
     yield int(Fraction(abs(twice), 2 * figure.lattice.scale**2) * unit.denominator)
 

@@ -21,7 +21,9 @@ def parse_vector(text: str, lattice: Lattice, where: str) -> Form:
     try:
         return check_vector([int(x) for x in text.split(",")], lattice, where)
     except ValueError:
-        raise SeriesError(f"{text!r} is no list of whole numbers", where=where, mend="write for example 1,0") from None
+        raise SeriesError(
+            f"{text!r} is no list of whole numbers", where=where, mend="write for example 1,0"
+        ) from None
 
 
 def check_vector(entries: Sequence[int], lattice: Lattice, where: str) -> Form:
@@ -29,10 +31,13 @@ def check_vector(entries: Sequence[int], lattice: Lattice, where: str) -> Form:
     vector = tuple(entries)
     if len(vector) != lattice.dimension:
         raise SeriesError(
-            f"{len(vector)} numbers, but the lattice {lattice.name} has {lattice.dimension} coordinates", where=where
+            f"{len(vector)} numbers, but the lattice {lattice.name} has {lattice.dimension} coordinates",
+            where=where,
         )
     if not any(vector) or max(map(abs, vector)) > GREATEST:
-        raise SeriesError("all zero, or too large", where=where, mend=f"use whole numbers up to {GREATEST}, not all 0")
+        raise SeriesError(
+            "all zero, or too large", where=where, mend=f"use whole numbers up to {GREATEST}, not all 0"
+        )
     return vector
 
 

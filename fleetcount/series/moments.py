@@ -44,7 +44,11 @@ def denominator(lattice: Lattice, moments: Sequence[str]) -> int:
     """The least number that makes all these moments whole, for every configuration; printed with the table."""
     unit = Fraction(lattice.scale**2 * lattice.metric_scale)
     products = [Fraction(dot(lattice, lattice.step(a), lattice.step(a))) for a in lattice.arcs]
-    products += [2 * Fraction(dot(lattice, lattice.step(a), lattice.step(b))) for a in lattice.arcs for b in lattice.arcs]
+    products += [
+        2 * Fraction(dot(lattice, lattice.step(a), lattice.step(b)))
+        for a in lattice.arcs
+        for b in lattice.arcs
+    ]
     wanted = [rational_gcd(products) / unit] if set(moments) - {"height2"} else []
     if {"height2", "along2"} & set(moments):
         wanted.append(height_unit(lattice))

@@ -133,8 +133,12 @@ def shorthand(lattice: Lattice, text: str) -> tuple[Wall, ...]:
         return region(lattice, [wall(lattice, up, 0), wall(lattice, down, -sizes[0] * layer)])
     if (name == "box" and len(sizes) == d) or (name == "tube" and 0 < len(sizes) < d):
         both = [(axis, tuple(-f for f in axis), size) for axis, size in zip(axes, sizes, strict=False)]
-        return region(lattice, [w for a, b, size in both for w in (wall(lattice, a, 0), wall(lattice, b, -size))])
-    raise SeriesError(f"unknown region {text!r} in {d} dimensions", where="--region", mend=f"known: {SHORTHANDS}")
+        return region(
+            lattice, [w for a, b, size in both for w in (wall(lattice, a, 0), wall(lattice, b, -size))]
+        )
+    raise SeriesError(
+        f"unknown region {text!r} in {d} dimensions", where="--region", mend=f"known: {SHORTHANDS}"
+    )
 
 
 def _sizes(text: str, argument: str) -> list[int]:
@@ -170,7 +174,9 @@ def _rank(rows: Iterable[Sequence[int]]) -> int:
         if column is None:
             continue
         rank += 1
-        left = [[x - other[column] / row[column] * y for x, y in zip(other, row, strict=True)] for other in left]
+        left = [
+            [x - other[column] / row[column] * y for x, y in zip(other, row, strict=True)] for other in left
+        ]
     return rank
 
 

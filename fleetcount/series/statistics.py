@@ -69,7 +69,9 @@ def parse(text: str, lattice: Lattice) -> Statistic:
         return Statistic(name, direction=_sense(parse_vector(argument, lattice, f"--by {text}")))
     if name == "visits":
         if argument not in ("", "any") and not argument.isdecimal():
-            raise SeriesError(f"{argument!r} is no wall", where=f"--by {text}", mend="write visits:2 or visits:any")
+            raise SeriesError(
+                f"{argument!r} is no wall", where=f"--by {text}", mend="write visits:2 or visits:any"
+            )
         return Statistic(name, wall=0 if argument == "any" else int(argument or 1))
     if argument:
         raise SeriesError(f"{name} takes no argument", where=f"--by {text}")
@@ -112,7 +114,9 @@ def _area_refusal(lattice: Lattice, rule: CountedObject) -> str | None:
 def _always_turns(lattice: Lattice) -> bool:
     """Whether no step can be followed by one in its own direction."""
     return not any(
-        _same_direction(lattice.step(a), lattice.step(b)) for a in lattice.arcs for b in lattice.arms[a.target]
+        _same_direction(lattice.step(a), lattice.step(b))
+        for a in lattice.arcs
+        for b in lattice.arms[a.target]
     )
 
 
@@ -125,7 +129,11 @@ def _edges_cross(lattice: Lattice) -> bool:
     """Whether two edges of a lattice in two dimensions cross or overlap away from their ends."""
     reach = 2 + max((abs(c) for arc in lattice.arcs for c in arc.cell), default=0)
     cells = range(-reach, reach + 1)
-    shifts = [(i, j if lattice.periods == 2 else 0) for i in cells for j in (cells if lattice.periods == 2 else (0,))]
+    shifts = [
+        (i, j if lattice.periods == 2 else 0)
+        for i in cells
+        for j in (cells if lattice.periods == 2 else (0,))
+    ]
     segments = [(lattice.positions[a.source], lattice.step(a)) for a in lattice.arcs]
     return any(
         _cross((p, u), (tuple(x + lattice.scale * s for x, s in zip(q, shift, strict=True)), v))

@@ -69,7 +69,9 @@ def unfolded(series: Series, table: Tally, partial: bool = False) -> Tally:
     for place, values in together.sorted_rows():
         orbit = orbits[place[at : at + width]]
         if not partial and any(value % len(orbit) for value in values):
-            raise TrustError(f"{values[0]} is no multiple of the {len(orbit)} ends of an orbit", where=f"row {place}")
+            raise TrustError(
+                f"{values[0]} is no multiple of the {len(orbit)} ends of an orbit", where=f"row {place}"
+            )
         share = tuple(value // len(orbit) for value in values)
         for end in orbit:
             spread.rows[(*place[:at], *end, *place[at + width :])] = share

@@ -108,7 +108,11 @@ def patch_of(series: Series, root: Prefix, top: int) -> Patch:
     further from its root than half its length.
     """
     return build(
-        series.lattice, root.start, _radius(series, top), allowed_sites(series, root), width=width(series.lattice)
+        series.lattice,
+        root.start,
+        _radius(series, top),
+        allowed_sites(series, root),
+        width=width(series.lattice),
     )
 
 

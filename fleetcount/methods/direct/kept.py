@@ -32,7 +32,11 @@ def _named_forms(series: Series) -> tuple[list[Form], list[Form]]:
     """Forms whose values must stay, and forms whose values may change sign."""
     exact = [wall.form for wall in series.walls]
     up = series.lattice.up
-    if series.rule.above_start or series.rule.ends == "on top" or any(s.name == "height" for s in series.statistics):
+    if (
+        series.rule.above_start
+        or series.rule.ends == "on top"
+        or any(s.name == "height" for s in series.statistics)
+    ):
         exact.append(up)
     either = [up] if {"height2", "along2"} & set(series.moments) else []
     either += [direction_form(s.direction, series.lattice) for s in series.statistics if s.name == "span"]

@@ -44,7 +44,9 @@ def possible(series: Series, prefix: Prefix, top: int) -> list[list[int]]:
     for depth, here in enumerate(path):
         before = path[: depth + 1]
         arms = sorted(near[depth]) if aims else list(range(len(lattice.arms[here[0]])))
-        found.append([arm for arm in arms if twin.begins(series, prefix, [*before, twin.step(lattice, here, arm)])])
+        found.append(
+            [arm for arm in arms if twin.begins(series, prefix, [*before, twin.step(lattice, here, arm)])]
+        )
     return found
 
 

@@ -11,8 +11,8 @@ from fleetcount.lattice.model import Lattice
 from fleetcount.lattice.patch import check_fits, sites_needed
 from fleetcount.methods.direct.allowed import allowed_sites
 from fleetcount.methods.direct.ground import width
-from fleetcount.methods.direct.keys import Prefix
 from fleetcount.methods.direct.kept import kept_symmetries
+from fleetcount.methods.direct.keys import Prefix
 from fleetcount.methods.direct.refined_search import nodes_within
 from fleetcount.series import forms
 from fleetcount.series.definition import Series

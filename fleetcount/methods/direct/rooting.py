@@ -45,8 +45,14 @@ def rootings(series: Series) -> tuple[bool, ...]:
 
 def refusal(series: Series) -> str | None:
     """Why a series cannot be rooted, or None."""
-    if series.rule.avoids == "edges" and shape(series.lattice, series.walls) == "half-space" and series.rule.closed:
-        return f"a {series.object} in a half-space has no root of its own; give a slab, or a corner and a start"
+    if (
+        series.rule.avoids == "edges"
+        and shape(series.lattice, series.walls) == "half-space"
+        and series.rule.closed
+    ):
+        return (
+            f"a {series.object} in a half-space has no root of its own; give a slab, or a corner and a start"
+        )
     return None
 
 

@@ -115,7 +115,9 @@ class Search(Slices):
                 self.done = True
                 return
             if there == 0 or there in stack.path[: depth + 1]:
-                raise InputError("a prefix that the object cannot begin with", where=".".join(map(str, self.arms)))
+                raise InputError(
+                    "a prefix that the object cannot begin with", where=".".join(map(str, self.arms))
+                )
             if int(ground.images[state, kind, arm]) == 0:
                 raise InputError("a prefix that another one stands for", where=".".join(map(str, self.arms)))
             stack.path[depth + 1] = there

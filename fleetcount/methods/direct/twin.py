@@ -6,6 +6,7 @@ How one configuration is measured stands in `series.figure`.
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Sequence
 
 from fleetcount.lattice.model import Lattice
@@ -55,7 +56,9 @@ def walls_at(series: Series, prefix: Prefix) -> tuple[Wall, ...]:
 def begins(series: Series, prefix: Prefix, path: Sequence[Point]) -> bool:
     """Whether an object can begin with these sites."""
     lattice, rule, start = series.lattice, series.rule, path[0]
-    if not _avoids(series, path) or not all(contains(lattice, walls_at(series, prefix), *point) for point in path):
+    if not _avoids(series, path) or not all(
+        contains(lattice, walls_at(series, prefix), *point) for point in path
+    ):
         return False
     if rule.above_start and any(height(lattice, point, start) <= 0 for point in path[1:]):
         return False
@@ -67,7 +70,7 @@ def begins(series: Series, prefix: Prefix, path: Sequence[Point]) -> bool:
 def _avoids(series: Series, path: Sequence[Point]) -> bool:
     avoids = series.rule.avoids
     if avoids == "edges":
-        edges = [_edge(series.lattice, a, b) for a, b in zip(path, path[1:], strict=False)]
+        edges = [_edge(series.lattice, a, b) for a, b in itertools.pairwise(path)]
         return len(set(edges)) == len(edges)
     if len(set(path)) < len(path):
         return False
