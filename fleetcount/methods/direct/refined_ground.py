@@ -48,7 +48,6 @@ class Tables(NamedTuple):
     height: Array
     open_arms: Array
     square: Array
-    radius: Array
     dual: Array
     place: Array
     stride: Array
@@ -85,7 +84,7 @@ class RefinedGround:
         """Of the sums: lengths, values of the two statistics, columns."""
         first, second = ([m.size for m in self.measures] + [1, 1])[:2]
         traits = traits_of(self.series)
-        return self.top + 2, first, second, 1 + traits.squares + traits.monomers + traits.pairs
+        return self.top + 2, first, second, 1 + traits.distances + traits.heights + traits.monomers + traits.pairs
 
 
 def refined_ground(series: Series, root: Prefix, top: int) -> RefinedGround:
@@ -128,7 +127,8 @@ def traits_of(series: Series) -> rk.Traits:
         closed=int(rule.closed),
         one_way=int(lattice.one_way),
         sorts=sorts,
-        squares=bool({"end2", "along2"} & names) + bool({"height2", "along2"} & names),
+        distances=int(bool({"end2", "along2"} & names)),
+        heights=int(bool({"height2", "along2"} & names)),
         monomers=int("monomer2" in names),
         pairs=int("gyration2" in names),
         dimension=lattice.dimension if "gyration2" in names else 0,
@@ -151,7 +151,7 @@ def _ground(series: Series, root: Prefix, top: int) -> RefinedGround:
         patch.next.view(np.uint32),
         patch.kind.view(np.uint16),
         *states.tables(traits.arms),
-        _beside(patch, traits.adjacent),
+        _beside(lattice, patch, traits.adjacent),
         edge,
         reverse,
         _home(series, patch, root),
@@ -161,10 +161,9 @@ def _ground(series: Series, root: Prefix, top: int) -> RefinedGround:
         layers(lattice, lattice.up, patch) if series.uses_up else np.zeros(patch.sites + 1, dtype=np.int32),
         patch.free.astype(np.int32),
         _squares(series, patch, square),
-        square,
         np.ascontiguousarray(dual),
         np.ascontiguousarray(positions),
-        _strides(lattice, traits.arms),
+        _strides(lattice, traits.arms).reshape(-1),
         np.array([m.unclosed for m in measures] + [0] * (2 - len(measures)), dtype=np.int32),
     )
     return RefinedGround(
@@ -185,12 +184,16 @@ def _positions(lattice: Lattice, patch: Patch) -> Array:
     return found
 
 
-def _beside(patch: Patch, columns: int) -> Array:
-    """The sites that an arc joins each site to, in either sense, each once; zeros behind them."""
+def _beside(lattice: Lattice, patch: Patch, columns: int) -> Array:
+    """The sites that an arc joins each site to, in either sense, each once; zeros elsewhere."""
+    if not columns:
+        return _nothing(2)
+    if not lattice.one_way:  # the same array as `next`: less memory to hold near
+        return patch.next.view(np.uint32)
     both = np.sort(np.concatenate([patch.next, patch.previous], axis=1), axis=1)[:, ::-1]
     repeated = both == np.pad(both, ((0, 0), (1, 0)))[:, :-1]
     both = np.sort(np.where(repeated, 0, both), axis=1)[:, ::-1]
-    return np.ascontiguousarray(both[:, :columns]).astype(np.uint32) if columns else _nothing(2)
+    return np.ascontiguousarray(both[:, :columns]).astype(np.uint32)
 
 
 def _edges(lattice: Lattice, patch: Patch) -> tuple[Array, Array, int]:
@@ -271,17 +274,12 @@ def _strides(lattice: Lattice, arms: int) -> Array:
 
 
 def _squares(series: Series, patch: Patch, square: Array) -> Array:
-    """Squared distances and squared heights from the start, int64 [2, sites + 1], those that are asked for first."""
-    names = set(series.moments)
-    wanted = []
-    if {"end2", "along2"} & names:
-        wanted.append(square)
-    if {"height2", "along2"} & names:
+    """Squared distances from the start, and squared heights where they are asked for: int64 [2, sites + 1]."""
+    height = np.zeros(patch.sites + 1, dtype=np.int64)
+    if {"height2", "along2"} & set(series.moments):
         height = layers(series.lattice, series.lattice.up, patch).astype(np.int64)
-        wanted.append((height - height[rk.START]) ** 2)
-    while len(wanted) < 2:
-        wanted.append(np.zeros(patch.sites + 1, dtype=np.int64))
-    return np.ascontiguousarray(np.stack(wanted))
+        height -= height[rk.START]
+    return np.ascontiguousarray(np.stack([square, height**2]))
 
 
 def load(series: Series) -> Callable[..., bool]:
@@ -290,24 +288,14 @@ def load(series: Series) -> Callable[..., bool]:
 
     def example(run: Callable[..., bool]) -> None:
         flat32, flat64 = np.zeros((1, 1), dtype=np.int32), np.zeros((2, 1), dtype=np.int64)
-        line32, line64 = np.zeros(1, dtype=np.int32), np.zeros(1, dtype=np.int64)
+        line32 = np.zeros(1, dtype=np.int32)
         index, cube = np.zeros((1, 1), dtype=np.uint32), np.zeros((1, 1, 1), dtype=np.uint32)
-        stacked, block64 = np.zeros((2, 1, 1), dtype=np.int32), np.zeros((1, 1, 1), dtype=np.int64)
+        stacked = np.zeros((2, 1, 1), dtype=np.int32)
         symmetry = (np.ones((1, 1, 1), dtype=np.int32), cube)
         tables = (index, np.zeros(1, dtype=np.uint16), *symmetry, index, index, index, line32, stacked)
-        rest = (
-            np.zeros((2, 1), dtype=np.int32),
-            flat32,
-            line32,
-            line32,
-            flat64,
-            line64,
-            flat64,
-            flat64,
-            block64,
-            line32,
-        )
+        sites = (np.zeros((2, 1), dtype=np.int32), flat32, line32, line32)
+        positions = (flat64, flat64, flat64, np.zeros(1, dtype=np.int64), line32)
         stack, marks = RefinedStack.of(4, traits.dimension, (6, 1, 1, 4)), RefinedMarks.of(1, 1)
-        run(*tables, *rest, *marks.arrays(), *stack.arrays(), 0)
+        run(*tables, *sites, *positions, *marks.arrays(), *stack.arrays(), 0)
 
     return compiled.kernel("direct", "refined", rk.refined_kernel, tuple(traits), example)

@@ -44,8 +44,8 @@ class Traits(NamedTuple):
         closed: objects come back to the start.
         one_way: of the lattice.
         sorts: the sort of each statistic, at most two.
-        squares: moments that are values of the end.
-        monomers, pairs: whether monomer2 and gyration2 are summed.
+        distances, heights, monomers, pairs: whether squared distances and heights of the end, monomer2 and gyration2
+            are summed.
         dimension: coordinates of a position.
     """
 
@@ -56,13 +56,14 @@ class Traits(NamedTuple):
     closed: int
     one_way: int
     sorts: tuple[int, ...]
-    squares: int
+    distances: int
+    heights: int
     monomers: int
     pairs: int
     dimension: int
 
 
-@njit(forceinline=True, nogil=True)  # type: ignore[untyped-decorator]
+@njit(forceinline=True, nogil=True)
 def _after(sort, q, before, gain, value, here, a, there, pairs, turned, again):  # type: ignore[no-untyped-def]
     """A statistic's value after the step from `here` by arm `a` to `there`; spans apart."""
     if sort == ADDED or sort == AREA:
@@ -76,19 +77,21 @@ def _after(sort, q, before, gain, value, here, a, there, pairs, turned, again): 
     return value[q, there]
 
 
-@njit(forceinline=True, nogil=True)  # type: ignore[untyped-decorator]
-def _add(sums, n, cell, times, squares, square, site, monomers, far, gyration, apart):  # type: ignore[no-untyped-def]
-    """Add an object that ends at a site to its cell of the sums, `times` times."""
+@njit(forceinline=True, nogil=True)
+def _add(sums, n, cell, times, distances, distance, heights, height, monomers, far, pairs, apart):  # type: ignore[no-untyped-def]
+    """Add an object to its cell of the sums, `times` times, with those moments that are asked for."""
     sums[n, uint64(cell)] += times
-    for q in range(squares):
-        sums[n, uint64(cell + 1 + q)] += times * square[uint32(q), site]
+    if distances:
+        sums[n, uint64(cell + 1)] += times * distance
+    if heights:
+        sums[n, uint64(cell + 1 + distances)] += times * height
     if monomers:
-        sums[n, uint64(cell + 1 + squares)] += times * far
-    if gyration:
-        sums[n, uint64(cell + 1 + squares + monomers)] += times * apart
+        sums[n, uint64(cell + 1 + distances + heights)] += times * far
+    if pairs:
+        sums[n, uint64(cell + 1 + distances + heights + monomers)] += times * apart
 
 
-@njit(forceinline=True, nogil=True)  # type: ignore[untyped-decorator]
+@njit(forceinline=True, nogil=True)
 def _ways_on(nxt, open_arms, marks, least, site, before):  # type: ignore[no-untyped-def]
     """Neighbours of a site to go on to: neither marked with `least` or more nor the unmarked site `before`."""
     ways = open_arms[site]
@@ -107,7 +110,8 @@ def refined_kernel(
     closed: int,
     one_way: int,
     sorts: tuple[int, ...],
-    squares: int,
+    distances: int,
+    heights: int,
     monomers: int,
     pairs: int,
     dimension: int,
@@ -118,8 +122,8 @@ def refined_kernel(
     `edge` uint32 [sites + 1, arms] with `reverse` likewise, numbers of the edges taken there and back, 0 for none;
     `home` int32 [sites + 1] steps to the goal; `gain` int32 [2, sites + 1, arms]; `value` int32 [2, sites + 1]; `way`
     int32 [kinds, arms]; `height`, `open_arms` int32 [sites + 1]; `square` int64 [2, sites + 1],
-    moments of the end; `radius` int64 [sites + 1], squared distances; `dual` and `place` int64
-    [sites + 1, dimension], positions with and without the metric applied; `stride` int64 [kinds, arms, dimension], what
+    squared distances and heights from the start; `dual` and `place` int64
+    [sites + 1, dimension], positions with and without the metric applied; `stride` int64 [kinds * arms * dimension], what
     an arm adds to a position; `unclosed` int32 [2], taken off a statistic
     when an object closes, because the start was counted already.
 
@@ -133,13 +137,14 @@ def refined_kernel(
     second_sort = sorts[1] if statistics > 1 else -1
     spans = SPANNED in sorts
     turns = TURNED in sorts
-    columns = 1 + squares + monomers + pairs
+    columns = 1 + distances + heights + monomers + pairs
+    measured = distances or monomers or pairs
     last_closed = closed or ends == AT_TARGET
 
     @njit(nogil=True, cache=True)
     def run(  # type: ignore[no-untyped-def]
         nxt, kind, images, onward, beside, edge, reverse, home, gain, value, way, height, open_arms, square,
-        radius, dual, place, stride, unclosed, seen, near, used, level, most, least, crest, last_way, spread, norm,
+        dual, place, stride, unclosed, seen, near, used, level, most, least, crest, last_way, spread, norm,
         vector, path, arm, state, weight, sums, reg, second, limit,
     ):  # fmt: skip
         depth = reg[DEPTH]
@@ -240,14 +245,19 @@ def refined_kernel(
                 elif statistics > 1:
                     s1 = _after(second_sort, 1, level[d, 1], gain, value, here, a, there, pair, turned, again)
 
+                distance = square[0, there] if measured else 0
+                tall = square[1, there] if heights else 0
                 far = 0
                 wide = 0
+                twice = 0
                 if monomers or pairs:
-                    far = spread[d] + radius[there]
+                    far = spread[d] + distance
                 if pairs:
-                    wide = norm[d] + radius[there]
+                    dot = 0
                     for i in range(dimension):
-                        wide += 2 * vector[d, uint32(i)] * place[there, uint32(i)]
+                        dot += vector[d, uint32(i)] * place[there, uint32(i)]
+                    twice = 2 * dot
+                    wide = norm[d] + distance + twice
 
                 if closed:
                     if home[there] == 1 and n < top:
@@ -290,7 +300,7 @@ def refined_kernel(
                                 c0 = abs(c0)
                             if second_sort == AREA:
                                 c1 = abs(c1)
-                            cell = (c0 * second + c1) * columns
+                            cell = (c0 * second + c1 if statistics > 1 else c0) * columns
                             sums[uint64(n + 1), uint64(cell)] += factor
                             if pairs:
                                 sums[uint64(n + 1), uint64(cell + columns - 1)] += factor * (
@@ -305,21 +315,21 @@ def refined_kernel(
                     elif ends == AT_TARGET:
                         counts = home[there] == 0
                     if counts:
-                        cell = (s0 * second + s1) * columns
+                        cell = (s0 * second + s1 if statistics > 1 else s0) * columns
                         apart = (n + 1) * far - wide
-                        _add(sums, e, cell, factor, squares, square, there, monomers, far, pairs, apart)
+                        _add(sums, e, cell, factor, distances, distance, heights, tall, monomers, far, pairs, apart)
 
                 if not last_closed and n == top - 1:
                     # The last step: nothing is marked for it, not even the site that it is taken from.
                     t = uint64(top)
+                    strides = 0
                     apart = 0
                     if pairs:
-                        apart = (n + 2) * far - wide
+                        strides = int64(kind[there]) * (arms * dimension)
+                        apart = (n + 2) * far - wide - twice - 2 * distance
                         for i in range(dimension):
                             j = uint32(i)
-                            total = vector[d, j] + dual[there, j]
-                            vector[e, j] = 2 * total
-                            apart -= 2 * total * place[there, j]
+                            vector[e, j] = 2 * (vector[d, j] + dual[there, j])
                     for k in range(arms):
                         b = uint32(k)
                         x = nxt[there, b]
@@ -371,28 +381,15 @@ def refined_kernel(
                         elif ends == ON_TOP:
                             if height[x] < max(crest[d], height[there]):
                                 continue
-                        cell = (c0 * second + c1) * columns
-                        far_out = 0
-                        if monomers:
-                            far_out = far + radius[x]
+                        cell = (c0 * second + c1 if statistics > 1 else c0) * columns
+                        last_distance = square[0, x] if measured else 0
+                        last_tall = square[1, x] if heights else 0
                         last_apart = 0
                         if pairs:
-                            last_apart = apart + top * radius[x]
+                            last_apart = apart + top * last_distance
                             for i in range(dimension):
-                                last_apart -= vector[e, uint32(i)] * stride[kind[there], b, uint32(i)]
-                        _add(
-                            sums,
-                            t,
-                            cell,
-                            last_factor,
-                            squares,
-                            square,
-                            x,
-                            monomers,
-                            far_out,
-                            pairs,
-                            last_apart,
-                        )
+                                last_apart -= vector[e, uint32(i)] * stride[uint64(strides + k * dimension + i)]
+                        _add(sums, t, cell, last_factor, distances, last_distance, heights, last_tall, monomers, far + last_distance, pairs, last_apart)
                 elif n < top - closed and not (ends == AT_TARGET and home[there] == 0):
                     if avoids == EDGES:
                         used[edge[here, a]] = 1
