@@ -55,6 +55,15 @@ def test_alike_sites_do_not_stand_for_each_other_where_a_direction_is_named(
     assert tables[0] == tables[1]
 
 
+@pytest.mark.parametrize("top", range(4, 9))
+def test_a_step_there_and_back_is_no_polygon(top: int) -> None:
+    """What comes back by the edge it left by is counted nowhere, not even where values of statistics are kept."""
+    series = define(catalogue.find("square"), "polygon", by=["area", "contacts"])
+    expected = {(4, 1, 0): 1, (6, 2, 1): 2, (8, 3, 2): 6, (8, 4, 0): 1}
+    found = {place: row[0] for place, row in by_kernel(series, top).sorted_rows()}
+    assert found == {place: count for place, count in expected.items() if place[0] <= top}
+
+
 Inside = Callable[[plain.Place], bool]
 
 

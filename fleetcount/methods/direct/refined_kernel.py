@@ -260,7 +260,7 @@ def refined_kernel(
                     wide = norm[d] + distance + twice
 
                 if closed:
-                    if home[there] == 1 and n < top:
+                    if home[there] == 1 and n < top and (one_way or n > 1):
                         for k in range(arms):
                             if nxt[there, uint32(k)] != START:
                                 continue
