@@ -21,6 +21,7 @@ from fleetcount.ledger.memory import MemoryStore
 from fleetcount.ledger.record import TallyRecord, checksum
 from fleetcount.ledger.store import Answer
 from fleetcount.methods.registry import get
+from fleetcount.methods.face import Forecast
 from fleetcount.series.defining import define
 from fleetcount.series.definition import Series
 from fleetcount.series.tally import Place, Tally
@@ -262,6 +263,7 @@ def test_readings_are_compared_cell_by_cell(column: int) -> None:
     store = MemoryStore()
     lease = held(store, series)
     for top, crew in ((5, Forging((4, 1), column)), (6, Crew())):
-        set_to_work(store, lease, crew, task=open_reading(store, lease, series, "direct", top))
+        task = open_reading(store, lease, series, "direct", top)
+        set_to_work(store, lease, crew, task=task, forecast=Forecast(1e9, 1.0, 1.0, ()))  # nothing is divided
     with pytest.raises(TrustError, match="disagree at length 4, contacts 1: 32 96 and "):
         tables.view(store, series)

@@ -165,11 +165,12 @@ def set_to_work(
     task: Task | None = None,
     stop: StopFlag | None = None,
     observer: Observer | None = None,
+    forecast: Forecast = MANY_UNITS,
 ) -> Task:
     """Open a reading (or go on with one) and count it to its end; returns the task."""
     task = task or open_reading(store, lease, square_walks(), "direct", top)
     observer, stop = observer or Nobody(), stop or StopFlag()
-    Coordinator(store, lease, task, crew, MANY_UNITS, observer, stop).run()
+    Coordinator(store, lease, task, crew, forecast, observer, stop).run()
     return task
 
 
