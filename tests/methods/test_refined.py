@@ -69,7 +69,7 @@ def sums_of(base: RefinedGround, prefixes: list[tuple[int, ...]]) -> Tally:
             while not search.slice():
                 pass
             sums.add(search.tally(), images)
-    return METHOD.assemble(base.series, sums)
+    return sums if base.series.rule.closed else METHOD.assemble(base.series, sums)
 
 
 @many
