@@ -84,7 +84,12 @@ class RefinedGround:
         """Of the sums: lengths, values of the two statistics, columns."""
         first, second = ([m.size for m in self.measures] + [1, 1])[:2]
         traits = traits_of(self.series)
-        return self.top + 2, first, second, 1 + traits.distances + traits.heights + traits.monomers + traits.pairs
+        return (
+            self.top + 2,
+            first,
+            second,
+            1 + traits.distances + traits.heights + traits.monomers + traits.pairs,
+        )
 
 
 def refined_ground(series: Series, root: Prefix, top: int) -> RefinedGround:

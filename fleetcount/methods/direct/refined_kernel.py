@@ -121,20 +121,22 @@ def refined_kernel(
     Tables (read only): `nxt` uint32 [sites + 1, arms]; `beside` uint32 [sites + 1, adjacent], every adjacent site once;
     `edge` uint32 [sites + 1, arms] with `reverse` likewise, numbers of the edges taken there and back, 0 for none;
     `home` int32 [sites + 1] steps to the goal; `gain` int32 [2, sites + 1, arms]; `value` int32 [2, sites + 1]; `way`
-    int32 [kinds, arms]; `height`, `open_arms` int32 [sites + 1]; `square` int64 [2, sites + 1],
-    squared distances and heights from the start; `dual` and `place` int64
-    [sites + 1, dimension], positions with and without the metric applied; `stride` int64 [kinds * arms * dimension], what
-    an arm adds to a position; `unclosed` int32 [2], taken off a statistic
-    when an object closes, because the start was counted already.
+    int32 [kinds, arms]; `height`, `open_arms` int32 [sites + 1]; `square` int64 [2, sites + 1], squared distances and
+    heights from the start; `dual` and `place` int64 [sites + 1, dimension], positions with and without the metric
+    applied; `stride` int64 [kinds * arms * dimension], what an arm adds to a position; `unclosed` int32 [2], taken off
+    a statistic when an object closes, because the start was counted already.
 
-    Marks: `seen` and `near` int32 [sites + 1], `used` uint8 [edges + 1]. Stack by depth: `level`, `most`, `least` int32
-    [depths, 2], `crest`, `last_way` int32, `spread`, `norm` int64, `vector` int64 [depths, dimension].
+    Marks: `near` int32 [sites + 1], visited neighbours, `VISITED` more where the site is visited itself; of objects that
+    avoid edges the visits stand in `seen` int32 [sites + 1] instead, and `used` uint8 [edges + 1]. Stack by depth:
+    `level`, `most`, `least` int32 [depths, 2], `crest`, `last_way` int32, `spread`, `norm` int64, `vector` int64
+    [depths, dimension].
 
-    `sums` is int64 [lengths, values, values, columns].
+    `sums` is int64 [lengths, values * second * columns], `second` being the number of values of the second statistic.
     """
     statistics = len(sorts)
     first_sort = sorts[0] if statistics > 0 else -1
     second_sort = sorts[1] if statistics > 1 else -1
+    first_adds, second_adds = first_sort in (ADDED, AREA), second_sort in (ADDED, AREA)
     spans = SPANNED in sorts
     turns = TURNED in sorts
     columns = 1 + distances + heights + monomers + pairs
@@ -283,14 +285,14 @@ def refined_kernel(
                                 first = last_way[1] if depth > 0 else heading
                                 bend = (1 if final != heading else 0) + (1 if final != first else 0)
                             if statistics > 0:
-                                if first_sort == ADDED or first_sort == AREA:
+                                if first_adds:
                                     c0 += gain[0, there, uint32(k)] - unclosed[0]
                                 elif first_sort == CONTACTS:
                                     c0 -= rejoined
                                 elif first_sort == TURNED:
                                     c0 += bend
                             if statistics > 1:
-                                if second_sort == ADDED or second_sort == AREA:
+                                if second_adds:
                                     c1 += gain[1, there, uint32(k)] - unclosed[1]
                                 elif second_sort == CONTACTS:
                                     c1 -= rejoined
@@ -317,7 +319,20 @@ def refined_kernel(
                     if counts:
                         cell = (s0 * second + s1 if statistics > 1 else s0) * columns
                         apart = (n + 1) * far - wide
-                        _add(sums, e, cell, factor, distances, distance, heights, tall, monomers, far, pairs, apart)
+                        _add(
+                            sums,
+                            e,
+                            cell,
+                            factor,
+                            distances,
+                            distance,
+                            heights,
+                            tall,
+                            monomers,
+                            far,
+                            pairs,
+                            apart,
+                        )
 
                 if not last_closed and n == top - 1:
                     # The last step: nothing is marked for it, not even the site that it is taken from.
@@ -328,8 +343,8 @@ def refined_kernel(
                         strides = int64(kind[there]) * (arms * dimension)
                         apart = (n + 2) * far - wide - twice - 2 * distance
                         for i in range(dimension):
-                            j = uint32(i)
-                            vector[e, j] = 2 * (vector[d, j] + dual[there, j])
+                            c = uint32(i)
+                            vector[e, c] = 2 * (vector[d, c] + dual[there, c])
                     for k in range(arms):
                         b = uint32(k)
                         x = nxt[there, b]
@@ -378,9 +393,8 @@ def refined_kernel(
                         if ends == TRAPPED:
                             if _ways_on(nxt, open_arms, near, VISITED, x, there) != 0:
                                 continue
-                        elif ends == ON_TOP:
-                            if height[x] < max(crest[d], height[there]):
-                                continue
+                        elif ends == ON_TOP and height[x] < max(crest[d], height[there]):
+                            continue
                         cell = (c0 * second + c1 if statistics > 1 else c0) * columns
                         last_distance = square[0, x] if measured else 0
                         last_tall = square[1, x] if heights else 0
@@ -388,8 +402,23 @@ def refined_kernel(
                         if pairs:
                             last_apart = apart + top * last_distance
                             for i in range(dimension):
-                                last_apart -= vector[e, uint32(i)] * stride[uint64(strides + k * dimension + i)]
-                        _add(sums, t, cell, last_factor, distances, last_distance, heights, last_tall, monomers, far + last_distance, pairs, last_apart)
+                                last_apart -= (
+                                    vector[e, uint32(i)] * stride[uint64(strides + k * dimension + i)]
+                                )
+                        _add(
+                            sums,
+                            t,
+                            cell,
+                            last_factor,
+                            distances,
+                            last_distance,
+                            heights,
+                            last_tall,
+                            monomers,
+                            far + last_distance,
+                            pairs,
+                            last_apart,
+                        )
                 elif n < top - closed and not (ends == AT_TARGET and home[there] == 0):
                     if avoids == EDGES:
                         used[edge[here, a]] = 1
