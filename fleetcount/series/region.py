@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Any, Literal
 
 from fleetcount.errors import SeriesError
 from fleetcount.lattice.model import Cell, Lattice
-from fleetcount.series.forms import Form, spacing, value
+from fleetcount.series.forms import Form, check_vector, spacing, value
 
 if TYPE_CHECKING:
     import numpy as np
@@ -24,6 +24,8 @@ if TYPE_CHECKING:
 
 SHORTHANDS = "half, quarter, orthant, wedge, slab:W, box:A,B,..., tube:A,..."
 _FARTHEST = 10**6
+_GREATEST_BOUND = 10**10
+"""Beyond what forms are at any start that can be given, and far within 64 bits."""
 
 
 @dataclass(frozen=True, order=True)
@@ -51,6 +53,11 @@ class Wall:
 
 def wall(lattice: Lattice, form: Form, least: Fraction | int) -> Wall:
     """The wall `form >= least`, reduced."""
+    form = check_vector(form, lattice, "region")
+    if abs(Fraction(least)) > _GREATEST_BOUND:
+        raise SeriesError(
+            f"{least} is too far away", where="region", mend=f"use bounds up to {_GREATEST_BOUND}"
+        )
     divisor = math.gcd(*form)
     primitive = tuple(f // divisor for f in form)
     asked = Fraction(least) / divisor

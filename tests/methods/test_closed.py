@@ -9,13 +9,15 @@ import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
+from fleetcount.errors import SeriesError
 from fleetcount.lattice import catalogue
 from fleetcount.lattice.model import Lattice
 from fleetcount.methods.direct.method import DirectMethod
 from fleetcount.series.defining import define
+from fleetcount.series.region import wall
 from tests.methods import plain
 from tests.methods.refined import by_kernel, interpreted, one_width
-from tests.methods.splitting import table
+from tests.methods.splitting import METHOD, table
 from tests.strategies import small_lattices
 
 many = settings(max_examples=50, deadline=None, suppress_health_check=[HealthCheck.too_slow])
@@ -106,3 +108,17 @@ def test_polygons_between_walls(
 
 def _value(lattice: Lattice, form: plain.Form, point: plain.Point) -> Fraction:
     return sum((f * x for f, x in zip(form, plain.at(lattice, point), strict=True)), Fraction(0))
+
+
+def test_walls_with_nothing_between() -> None:
+    """A strip without a site is refused before anything is counted, not counted as zero."""
+    square = catalogue.find("square")
+    series = define(square, "polygon", walls=[wall(square, (0, 1), 3), wall(square, (0, -1), -2)])
+    with pytest.raises(SeriesError, match="no site of the lattice lies between the walls"):
+        METHOD.check_reach(series, 8)
+
+
+def test_closed_trails_in_a_half_space_are_refused() -> None:
+    """They have no root of their own there, and the line says what to give instead."""
+    series = define(catalogue.find("square"), "closed-trail", region_name="half")
+    assert "give a slab, or a corner and a start" in str(METHOD.refuses(series))

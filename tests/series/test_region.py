@@ -200,3 +200,20 @@ def test_regions_of_two_dimensions(text: str) -> None:
 
     with pytest.raises(SeriesError, match="needs two dimensions"):
         shorthand(two_way_chain(), text)
+
+
+@pytest.mark.parametrize(
+    ("form", "least", "reason"),
+    (
+        ((0, 0), 0, "all zero, or too large"),
+        ((0, 10**6), 0, "all zero, or too large"),
+        ((1, 0, 0), 0, "3 numbers, but the lattice square has 2 coordinates"),
+        ((0, 1), -(10**30), "too far away"),
+        ((0, 1), 10**11, "too far away"),
+    ),
+)
+def test_walls_that_are_none(form: tuple[int, ...], least: int, reason: str) -> None:
+    """A form without a direction, with too many numbers or beyond what machine integers hold is refused."""
+    with pytest.raises(SeriesError, match=reason) as error:
+        wall(catalogue.find("square"), form, least)
+    assert "\n" not in str(error.value)

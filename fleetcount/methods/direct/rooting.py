@@ -99,6 +99,8 @@ def _between(series: Series) -> tuple[Root, ...]:
                 found.append(Root(site, cell, 1))
         if len(found) > _MOST_ROOTS:
             raise SeriesError(f"more than {_MOST_ROOTS} sites between the walls", where=series.title())
+    if not found:
+        raise SeriesError("no site of the lattice lies between the walls", where=series.title())
     return tuple(sorted(found))
 
 
