@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import sys
 import time
 from typing import TYPE_CHECKING, Any
@@ -52,12 +53,18 @@ def status(snapshot: Snapshot) -> str:
     )
 
 
+def _print(text: str) -> None:
+    """A line on standard error; that nobody can read it, or a full disk, is no reason to stop counting."""
+    with contextlib.suppress(OSError):
+        print(text, file=sys.stderr, flush=True)
+
+
 class Screen:
     """Observer of a count. A context manager, so that the bar goes away whatever happens."""
 
     def __init__(self, quiet: bool = False) -> None:
-        self._quiet = quiet
-        self._live = sys.stderr.isatty() and not quiet
+        self._quiet = quiet or sys.stderr is None
+        self._live = not self._quiet and sys.stderr.isatty()
         self._progress: Any = None
         self._task: Any = None
         self._last = time.monotonic() - LINE_SECONDS + _FIRST_LINE_SECONDS
@@ -87,12 +94,12 @@ class Screen:
             self._move(snapshot)
         elif not self._quiet and time.monotonic() - self._last >= LINE_SECONDS:
             self._last = time.monotonic()
-            print(status(snapshot), file=sys.stderr, flush=True)
+            _print(status(snapshot))
 
     def _say(self, text: str) -> None:
         if not self._quiet:
             self._close()
-            print(text, file=sys.stderr, flush=True)
+            _print(text)
 
     def _move(self, snapshot: Snapshot) -> None:
         left = "" if snapshot.remaining <= 0 else f"{duration(snapshot.seconds_left)} left"

@@ -70,13 +70,13 @@ def count_series(store: Store, series: Series, top: int, options: Options) -> Co
     """
     check(series, top)
     method = registry.get(METHOD)
-    with Interrupts(options.stop) as interrupts:
-        try:
+    try:
+        with Interrupts(options.stop) as interrupts:
             if not _covered(store, series, top):
                 _count(store, series, top, method, options, interrupts)
             return tables.view(store, series).table.cut(top)
-        except KeyboardInterrupt:
-            raise StoppedError("stopped") from None
+    except KeyboardInterrupt:
+        raise StoppedError("stopped") from None
 
 
 def check(series: Series, top: int) -> None:

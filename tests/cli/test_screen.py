@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import io
 import re
 import sys
@@ -120,6 +121,24 @@ def test_lines_where_there_is_no_terminal(
     lines = said.err.splitlines()
     assert len(lines) == 1 + (60 - 2) // LINE_SECONDS
     assert set(lines) == {"to n=30: 25.0%, 10/40 units, 150 Mnodes/s on 2 cores, 0 s left"}
+
+
+@pytest.mark.parametrize("stderr", [None, "/dev/full"])
+def test_nobody_can_read_it(stderr: str | None, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A standard error that is closed, or on a full disk, does not stop a count."""
+    if stderr is not None and not Path(stderr).exists():
+        pytest.skip(f"needs {stderr}")
+    file = None if stderr is None else Path(stderr).open("w")  # noqa: SIM115 - it cannot be closed cleanly
+    with monkeypatch.context() as patched:
+        patched.setattr(sys, "stderr", file)
+        with Screen() as screen:
+            screen.stage("starting")
+            screen.note("something")
+            screen._last = 0.0
+            screen.moment(MOMENT)
+    if file is not None:
+        with contextlib.suppress(OSError):
+            file.close()
 
 
 def test_a_status_never_says_done_too_soon() -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import signal
+import sys
 import threading
 import time
 from pathlib import Path
@@ -10,6 +11,7 @@ from pathlib import Path
 import psutil
 import pytest
 
+from fleetcount.errors import InputError
 from fleetcount.fleet.interrupt import Interrupts, StopFlag
 from tests.fleet.program import Running, line, query, running, tallies, units_out, wait_for
 from tests.fleet.test_kills import NAME, connected, finished
@@ -76,6 +78,43 @@ def test_in_another_thread_signals_are_left_alone() -> None:
     thread.start()
     thread.join()
     assert seen == [signal.getsignal(signal.SIGTERM)]
+
+
+def test_an_interrupt_in_a_callback_comes_again(capsys: pytest.CaptureFixture[str]) -> None:
+    """Where nothing can be raised an interrupt is not lost and nothing is printed: it comes again a moment later."""
+
+    class Finalised:
+        def __del__(self) -> None:
+            signal.raise_signal(signal.SIGTERM)
+
+    hooks, stop = (sys.unraisablehook, sys.excepthook), StopFlag()
+    with pytest.raises(KeyboardInterrupt), Interrupts(stop):
+        Finalised()
+        assert stop.up
+        time.sleep(60)
+    assert not stop.hurry and (sys.unraisablehook, sys.excepthook) == hooks
+    assert capsys.readouterr().err == ""
+
+
+def test_what_an_interrupt_broke_counts_as_interrupted() -> None:
+    """An error that an interrupt turned into (as when an extension is being loaded) is an interrupt; one of the
+    program's own stays what it is, and so does any error without an interrupt."""
+
+    def broken(error: Exception, interrupt: bool = True) -> None:
+        with Interrupts(StopFlag()):
+            try:
+                if interrupt:
+                    signal.raise_signal(signal.SIGINT)
+            except KeyboardInterrupt:
+                pass
+            raise error
+
+    with pytest.raises(KeyboardInterrupt):
+        broken(ImportError("an extension failed to load"))
+    with pytest.raises(InputError):
+        broken(InputError("odd"))
+    with pytest.raises(ImportError):
+        broken(ImportError("not installed"), interrupt=False)
 
 
 # Real processes
