@@ -126,8 +126,8 @@ def refined_kernel(
     applied; `stride` int64 [kinds * arms * dimension], what an arm adds to a position; `unclosed` int32 [2], taken off
     a statistic when an object closes, because the start was counted already.
 
-    Marks: `near` int32 [sites + 1], visited neighbours, `VISITED` more where the site is visited itself; of objects that
-    avoid edges the visits stand in `seen` int32 [sites + 1] instead, and `used` uint8 [edges + 1]. Stack by depth:
+    Marks: `near` int32 [sites + 1], visited neighbours, `VISITED` more where the site is visited itself; of objects
+    that avoid edges the visits stand in `seen` int32 [sites + 1] instead, and `used` uint8 [edges + 1]. Stack by depth:
     `level`, `most`, `least` int32 [depths, 2], `crest`, `last_way` int32, `spread`, `norm` int64, `vector` int64
     [depths, dimension].
 
