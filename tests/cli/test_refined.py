@@ -20,8 +20,8 @@ from fleetcount.ledger import tables
 from fleetcount.ledger.memory import MemoryStore
 from fleetcount.ledger.record import TallyRecord, checksum
 from fleetcount.ledger.store import Answer
-from fleetcount.methods.registry import get
 from fleetcount.methods.face import Forecast
+from fleetcount.methods.registry import get
 from fleetcount.series.defining import define
 from fleetcount.series.definition import Series
 from fleetcount.series.tally import Place, Tally
