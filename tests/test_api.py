@@ -21,8 +21,7 @@ from fleetcount.fleet import counting, dask_crew, work
 from fleetcount.ledger.access import open_store
 from fleetcount.ledger.states import State
 from tests.fleet.crews import SQUARE_WALKS
-from tests.fleet.program import LONGEST, environment, units_out
-from tests.fleet.test_kills import published_walks
+from tests.fleet.program import LONGEST, environment, published_walks, units_out
 
 
 def test_a_small_count() -> None:

@@ -56,6 +56,9 @@ def count(
     as_json: options.AsJson = False,
     as_csv: options.AsCsv = False,
     plain: options.Plain = False,
+    readmit: Annotated[
+        bool, typer.Option("--readmit", help="Hand out barred units again, which failed too often.")
+    ] = False,
     quiet: Annotated[bool, typer.Option("--quiet", help="No progress, only the table.")] = False,
 ) -> None:
     """Count a series up to a length, or go on where an earlier run was stopped.
@@ -80,7 +83,11 @@ def count(
             from fleetcount.fleet.counting import Options
 
             how = Options(
-                cores=cores, wait=math.inf if wait else 0.0, ledger_bytes=ledger_size * 1e9, stop=stop
+                cores=cores,
+                wait=math.inf if wait else 0.0,
+                ledger_bytes=ledger_size * 1e9,
+                readmit=readmit,
+                stop=stop,
             )
             with Screen(quiet) as screen:
                 how.observer = screen
@@ -92,7 +99,8 @@ def count(
         table = table.per_site()
     options.give(table, json=as_json, csv=as_csv, plain=plain)
     if not quiet:
-        options.say(f"{duration(time.monotonic() - began)}; every tally is in {location}")
+        kept = "nothing is kept" if location == ":memory:" else f"every tally is in {location}"
+        options.say(f"{duration(time.monotonic() - began)}; {kept}")
 
 
 def _counted(

@@ -51,7 +51,7 @@ def answer(app: typer.Typer, arguments: Sequence[str]) -> int:
     """Carry out one command line; returns the exit status."""
     try:
         status = _carry_out(app, list(arguments))
-        sys.stdout.flush()
+        _flush()
         return status
     except BrokenPipeError:  # the reader has seen enough, as in `fleetcount table ... | head`
         _silence()
@@ -96,10 +96,15 @@ def _fail(line: str, status: int, *, debug: bool = False) -> int:
     return status
 
 
+def _flush() -> None:
+    if sys.stdout is not None:  # None if this process was started with it closed
+        sys.stdout.flush()
+
+
 def _silence() -> None:
     """What standard output cannot take goes nowhere: the interpreter would complain of it at its end."""
     try:
-        sys.stdout.flush()
+        _flush()
     except OSError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 

@@ -89,7 +89,7 @@ class Coordinator:
             raise TrustError(
                 f"barred after {barred[0].attempts} failures, the last one: {barred[0].last_error}",
                 where=f"unit {barred[0].key}",
-                mend="its terms are not final; nothing else is missing",
+                mend="its terms are not final; nothing else is missing; `count --readmit` hands it out again",
             )
         self._store.finish_reading(self._lease, self._task.reading)
 

@@ -44,10 +44,9 @@ class Bundle:
 
 @dataclass
 class Pace:
-    """How fast it goes: nodes a second of one core, and nodes visited over nodes expected."""
+    """How fast it goes: nodes a second of one core."""
 
     rate: float
-    drift: float = 1.0
     _nodes: float = 0.0
     _seconds: float = 0.0
 
@@ -86,7 +85,7 @@ class Core:
             remaining: nodes still expected of all units that have no tally.
             slots: cores that count.
         """
-        left = remaining * self.pace.drift / self.pace.rate / max(1, slots)
+        left = remaining / self.pace.rate / max(1, slots)
         return max(LEAST_SECONDS, min(self.budget, left / 2))
 
     def deal(
@@ -98,7 +97,7 @@ class Core:
         kills processes is then blamed alone in the end. The bundles are not out before `sent`.
         """
         seconds, bundles = self.seconds(remaining, slots), []
-        enough = seconds * self.pace.rate / self.pace.drift
+        enough = seconds * self.pace.rate
         suspects = [unit for unit in waiting if self.suspect(unit.key)][:1]
         if any(self.suspect(key) for bundle in self.out.values() for key in bundle.keys):
             suspects = []

@@ -21,6 +21,7 @@ from fleetcount.fleet.snapshot import Nobody, Observer
 from fleetcount.fleet.work import Task
 from fleetcount.ledger import tables
 from fleetcount.ledger.leasing import this_process
+from fleetcount.ledger.states import State
 from fleetcount.ledger.store import RENEW_SECONDS, Lease, Machine, Store
 from fleetcount.methods import registry
 from fleetcount.methods.engine import versions
@@ -50,12 +51,14 @@ class Options:
         client: an open Dask client to count on, instead of this machine's cores.
         wait: seconds to wait for another coordinator that holds the series.
         ledger_bytes: size under which the ledger of one reading is to stay.
+        readmit: hand out units again that were barred because they failed too often.
     """
 
     cores: int | None = None
     client: Client | None = None
     wait: float = 0.0
     ledger_bytes: float = LEDGER_BYTES
+    readmit: bool = False
     observer: Observer = field(default_factory=Nobody)
     stop: StopFlag = field(default_factory=StopFlag)
 
@@ -158,6 +161,9 @@ class _Count:
                 self.store, self.lease, self.series, self.method.name, top
             )
             o = self.options
+            if o.readmit:
+                barred = [unit.key for unit in self.store.units(task.reading, State.BARRED)]
+                self.store.readmit(self.lease, task.reading, barred)
             Coordinator(
                 self.store, self.lease, task, crew, forecast, o.observer, o.stop, ledger_bytes=o.ledger_bytes
             ).run()

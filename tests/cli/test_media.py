@@ -13,8 +13,17 @@ from pathlib import Path
 import pytest
 
 from tests.cli.conftest import Answer, Fleetcount
-from tests.fleet.program import few_seconds, line, run, running, tallies, units_out, wait_for
-from tests.fleet.test_kills import connected, finished, published_walks
+from tests.fleet.program import (
+    counting,
+    few_seconds,
+    finished,
+    line,
+    published_walks,
+    run,
+    running,
+    tallies,
+    wait_for,
+)
 
 
 @contextlib.contextmanager
@@ -38,7 +47,7 @@ def test_a_disk_that_fills_up(tmp_path: Path, fleetcount: Fleetcount) -> None:
         ledger, ballast = small / "x.sqlite", small / "ballast"
         arguments = (*line(), "--ledger", str(ledger))
         with running(*arguments, cwd=tmp_path) as one:
-            wait_for(lambda: [w for w in one.workers() if connected(w)] and units_out(ledger))
+            wait_for(lambda: counting(one, ledger))
             with contextlib.suppress(OSError), ballast.open("wb", buffering=0) as file:
                 while True:
                     file.write(b"0" * 4096)
@@ -86,7 +95,7 @@ def test_a_table_while_another_process_counts(tmp_path: Path, fleetcount: Fleetc
     ledger = tmp_path / "fleetcount.sqlite"
     top = few_seconds() + 3  # so that it is not done before everything has been looked at
     with running("count", "square", "walk", "--to", str(top), cwd=tmp_path) as one:
-        wait_for(lambda: [w for w in one.workers() if connected(w)] and units_out(ledger))
+        wait_for(lambda: counting(one, ledger))
         table = fleetcount("table", "square", "walk", "--json")
         assert table.status == 0, table.err
         document = json.loads(table.out)

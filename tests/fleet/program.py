@@ -18,8 +18,12 @@ from typing import Any
 import psutil
 
 from fleetcount.lattice.catalogue import find
+from fleetcount.ledger import tables
+from fleetcount.ledger.access import open_store
+from fleetcount.ledger.states import State
 from fleetcount.methods import registry
 from fleetcount.series.defining import define
+from fleetcount.trust import published
 
 PROGRAM = (sys.executable, "-c", "from fleetcount.cli.main import run; run()")
 ROOT = Path(__file__).parents[2]
@@ -27,6 +31,7 @@ LONGEST = 120
 """Seconds that anything here may take on a very busy machine; only a hang takes so long."""
 
 
+NAME = "fleetcount.sqlite"
 FLEET_SECONDS = 3.5
 """Well above what a count in one process may take, since a forecast is noisy."""
 
@@ -153,7 +158,7 @@ def wait_for(condition: Callable[[], Any], seconds: float = LONGEST) -> Any:
         if found:
             return found
         assert time.monotonic() < end, "it did not happen"
-        time.sleep(0.02)
+        time.sleep(0.05)
 
 
 def query(ledger: Path, sql: str) -> list[tuple[Any, ...]]:
@@ -180,3 +185,37 @@ def units_out(ledger: Path) -> int:
     """Units of the ledger that are out."""
     rows = query(ledger, "SELECT count(*) FROM units WHERE state = 'out'")
     return int(rows[0][0]) if rows else 0
+
+
+def connected(process: psutil.Process) -> bool:
+    """Whether a process that counts has found its coordinator."""
+    with contextlib.suppress(psutil.Error):
+        return any(found.status == psutil.CONN_ESTABLISHED for found in process.net_connections("tcp"))
+    return False
+
+
+def counting(one: Running, ledger: Path) -> bool:
+    """Whether its fleet is there and has units."""
+    return units_out(ledger) > 0 and any(map(connected, one.workers()))
+
+
+def published_walks() -> dict[int, int]:
+    """Self-avoiding walks of the square lattice as published (OEIS A001411)."""
+    (table,) = [table for table in published.tables() if table.id == "walks-square"]
+    return {n: count for n, count in table.terms().items() if n <= few_seconds()}
+
+
+def finished(ledger: Path) -> None:
+    """The table is the published one, out of records that are all checked; each unit has one tally."""
+    series = define(find("square"), "walk", None)
+    with open_store(str(ledger), read_only=True) as store:
+        assert tables.view(store, series).table.counts() == published_walks()
+        for reading in store.readings(series.digest):
+            merged = store.merge(series.digest, reading.reading, check=True)
+            states = store.census(reading.reading).states
+            settled = states[State.COUNTED].units + states[State.DIVIDED].units
+            assert merged.complete and merged.tallies == settled
+        reached = [tables.reach(row) for row in store.readings(series.digest) if row.finished]
+        assert sorted(set(reached)) == sorted(reached) and max(reached) == few_seconds(), (
+            "a reading was begun twice"
+        )

@@ -6,6 +6,7 @@ import time
 from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import hypothesis.strategies as st
 import pytest
@@ -23,7 +24,7 @@ from fleetcount.ledger.record import TallyRecord, checksum
 from fleetcount.ledger.states import State
 from fleetcount.ledger.store import Answer, Lease, Store
 from fleetcount.methods.direct.method import DirectMethod
-from fleetcount.methods.face import Forecast
+from fleetcount.methods.face import Counted, Forecast
 from fleetcount.series.tally import Tally
 from tests.fleet.crews import (
     SQUARE_WALKS,
@@ -353,3 +354,24 @@ def test_the_lease_is_kept_while_nothing_is_written(monkeypatch: pytest.MonkeyPa
             assert holder is not None
             ends.add(holder[1])
     assert len(ends) > 3 and store.holder(square_walks().digest) is None
+
+
+def test_barred_units_are_counted_when_they_are_let_in_again(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A count that ended with a barred unit goes on to its table with `readmit`, and says so before."""
+    series, failing, honest = square_walks(), [True], DirectMethod.count
+    DirectMethod().forecast(series, range(10))  # its trials are not what fails
+
+    def count(self: DirectMethod, *arguments: Any, **named: Any) -> Counted:
+        if failing[0]:
+            raise RuntimeError("no luck")
+        return honest(self, *arguments, **named)
+
+    with MemoryStore() as store:
+        monkeypatch.setattr(DirectMethod, "count", count)
+        with pytest.raises(TrustError, match=r"no luck.*--readmit"):
+            counting.count_series(store, series, 9, counting.Options())
+        failing[0] = False
+        with pytest.raises(TrustError, match="barred"):
+            counting.count_series(store, series, 9, counting.Options())
+        table = counting.count_series(store, series, 9, counting.Options(readmit=True))
+    assert table[9] == SQUARE_WALKS[9]

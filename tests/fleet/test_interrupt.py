@@ -13,8 +13,18 @@ import pytest
 
 from fleetcount.errors import InputError
 from fleetcount.fleet.interrupt import Interrupts, StopFlag
-from tests.fleet.program import Running, line, query, running, tallies, units_out, wait_for
-from tests.fleet.test_kills import NAME, connected, finished
+from tests.fleet.program import (
+    NAME,
+    Running,
+    counting,
+    finished,
+    line,
+    query,
+    running,
+    tallies,
+    units_out,
+    wait_for,
+)
 
 SLACK = 4.0
 """Seconds allowed on a busy machine beyond the three that the program promises."""
@@ -182,7 +192,7 @@ def test_while_counting(number: signal.Signals, tmp_path: Path) -> None:
     """What the cores have is handed back and accepted, and the same line ends with the published table."""
     ledger = tmp_path / NAME
     with running(*line(), cwd=tmp_path) as one:
-        wait_for(lambda: [w for w in one.workers() if connected(w)] and units_out(ledger))
+        wait_for(lambda: counting(one, ledger))
         time.sleep(0.3)
         before = tallies(ledger)
         interrupted(one, number)
@@ -200,7 +210,7 @@ def test_while_counting(number: signal.Signals, tmp_path: Path) -> None:
 def test_an_impatient_user(tmp_path: Path) -> None:
     """Ctrl-C twice, and again on the way out: the same line, the same status, and the ledger in order."""
     with running(*line(), cwd=tmp_path) as one:
-        wait_for(lambda: [w for w in one.workers() if connected(w)] and units_out(tmp_path / NAME))
+        wait_for(lambda: counting(one, tmp_path / NAME))
         one.process.send_signal(signal.SIGINT)
         time.sleep(0.02)
         one.process.send_signal(signal.SIGINT)

@@ -15,38 +15,25 @@ import psutil
 import pytest
 
 from fleetcount.lattice.catalogue import find
-from fleetcount.ledger import tables
 from fleetcount.ledger.access import open_store
 from fleetcount.ledger.leasing import this_process
-from fleetcount.ledger.states import State
 from fleetcount.series.defining import define
-from fleetcount.trust import published
-from tests.fleet.program import ROOT, Running, few_seconds, line, query, running, tallies, units_out, wait_for
+from tests.fleet.program import (
+    NAME,
+    ROOT,
+    Running,
+    connected,
+    few_seconds,
+    finished,
+    line,
+    query,
+    running,
+    tallies,
+    units_out,
+    wait_for,
+)
 
-NAME = "fleetcount.sqlite"
 FEW, MANY = 5, 20
-
-
-def published_walks() -> dict[int, int]:
-    """Self-avoiding walks of the square lattice as published (OEIS A001411)."""
-    (table,) = [table for table in published.tables() if table.id == "walks-square"]
-    return {n: count for n, count in table.terms().items() if n <= few_seconds()}
-
-
-def finished(ledger: Path) -> None:
-    """The table is the published one, out of records that are all checked; each unit has one tally."""
-    series = define(find("square"), "walk", None)
-    with open_store(str(ledger), read_only=True) as store:
-        assert tables.view(store, series).table.counts() == published_walks()
-        for reading in store.readings(series.digest):
-            merged = store.merge(series.digest, reading.reading, check=True)
-            states = store.census(reading.reading).states
-            settled = states[State.COUNTED].units + states[State.DIVIDED].units
-            assert merged.complete and merged.tallies == settled
-        reached = [tables.reach(row) for row in store.readings(series.digest) if row.finished]
-        assert sorted(set(reached)) == sorted(reached) and max(reached) == few_seconds(), (
-            "a reading was begun twice"
-        )
 
 
 @contextlib.contextmanager
@@ -133,13 +120,6 @@ def test_the_same_line_at_once_after_a_kill(tmp_path: Path) -> None:
         ((taken,),) = query(ledger, "SELECT max(at) FROM events WHERE kind = 'coordinator started'")
         assert taken < ends
         one.process.kill()
-
-
-def connected(process: psutil.Process) -> bool:
-    """Whether a process that counts has found its coordinator."""
-    with contextlib.suppress(psutil.Error):
-        return any(found.status == psutil.CONN_ESTABLISHED for found in process.net_connections("tcp"))
-    return False
 
 
 def kill_workers(folder: Path, times: int, seed: int) -> None:

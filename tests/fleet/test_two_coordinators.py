@@ -20,8 +20,20 @@ from fleetcount.ledger.states import State
 from fleetcount.ledger.store import Share
 from fleetcount.series.defining import define
 from tests.cli.conftest import Fleetcount
-from tests.fleet.program import Running, few_seconds, line, query, running, units_out, wait_for
-from tests.fleet.test_kills import NAME, connected, finished, published_walks
+from tests.fleet.program import (
+    NAME,
+    Running,
+    connected,
+    counting,
+    few_seconds,
+    finished,
+    line,
+    published_walks,
+    query,
+    running,
+    units_out,
+    wait_for,
+)
 
 
 def test_the_second_says_who_holds_it(tmp_path: Path, fleetcount: Fleetcount) -> None:
@@ -62,7 +74,7 @@ def test_one_that_stands_still(tmp_path: Path) -> None:
     nothing."""
     ledger = tmp_path / NAME
     with running(*line(), cwd=tmp_path) as one:
-        wait_for(lambda: [w for w in one.workers() if connected(w)] and units_out(ledger))
+        wait_for(lambda: counting(one, ledger))
         wait_for(lambda: stopped_between_transactions(one, ledger))
         with running(*line(), cwd=tmp_path) as two:
             assert two.wait() == 0, two.stderr
@@ -93,7 +105,7 @@ def test_a_postgresql_ledger(tmp_path: Path, postgres: str, fleetcount: Fleetcou
             return 0
 
     with running(*line(), cwd=tmp_path, env=env) as one:
-        wait_for(lambda: quietly() and [w for w in one.workers() if connected(w)])
+        wait_for(lambda: quietly() and any(map(connected, one.workers())))
         one.process.kill()
         one.wait()
     shown = json.loads(fleetcount("progress", "--json", "--ledger", postgres).out)
