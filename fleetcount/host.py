@@ -103,10 +103,12 @@ def is_gone(pid: int, started: int) -> bool:
     if now is not None:
         return now != started
     try:
+        if os.name == "posix":
+            os.kill(pid, 0)  # psutil looks into /proc, which may hide the processes of others
         return not psutil.pid_exists(pid) or psutil.Process(pid).status() == psutil.STATUS_ZOMBIE
-    except (psutil.NoSuchProcess, OverflowError, ValueError):
+    except (psutil.NoSuchProcess, ProcessLookupError, OverflowError, ValueError):
         return True
-    except psutil.Error:
+    except (psutil.Error, PermissionError):
         return False
 
 

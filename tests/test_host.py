@@ -122,3 +122,17 @@ def test_a_cache_folder_that_cannot_be(tmp_path: Path, monkeypatch: pytest.Monke
     monkeypatch.setenv("FLEETCOUNT_CACHE", str(tmp_path / "file" / "cache"))
     with pytest.raises(FleetcountError, match="cannot be made"):
         host.cache_directory()
+
+
+@pytest.mark.skipif(os.name != "posix", reason="signals of POSIX systems")
+def test_a_hidden_process_of_another_user_is_not_gone(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A process that can neither be looked at nor be signalled, where /proc hides those of others, is there."""
+
+    def kill(pid: int, number: int) -> None:
+        raise PermissionError
+
+    monkeypatch.setattr(host, "process_start", lambda pid: None)
+    monkeypatch.setattr(psutil, "pid_exists", lambda pid: False)
+    assert host.is_gone(os.getpid(), 1)
+    monkeypatch.setattr(os, "kill", kill)
+    assert not host.is_gone(os.getpid(), 1)

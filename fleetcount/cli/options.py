@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 import shutil
-from collections.abc import Mapping
-from typing import TYPE_CHECKING, Annotated
+from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
 from fleetcount.errors import InputError, TrustError
-from fleetcount.series import moments, statistics
+from fleetcount.series import canonical, moments, statistics
 from fleetcount.series.objects import OBJECTS
 
 if TYPE_CHECKING:
@@ -113,8 +113,19 @@ def one_form(*, json: bool, csv: bool, plain: bool, polynomials: bool = False) -
         raise InputError("--json, --csv, --plain and --polynomials exclude each other", mend="choose one")
 
 
-def give(table: CoefficientTable, *, json: bool, csv: bool, plain: bool, polynomials: bool = False) -> None:
+def give(
+    table: CoefficientTable,
+    *,
+    json: bool,
+    csv: bool,
+    plain: bool,
+    polynomials: bool = False,
+    still_open: Sequence[Mapping[str, Any]] = (),
+) -> None:
     """Print a table in the form that was asked for, with what published values say of it.
+
+    Args:
+        still_open: readings that are not finished, for the JSON document.
 
     Raises:
         TrustError: a term contradicts a published value; the table is printed all the same.
@@ -124,7 +135,8 @@ def give(table: CoefficientTable, *, json: bool, csv: bool, plain: bool, polynom
     agreement = compare(table)
     line = agreement.line() if agreement else "no published values to compare with are at hand"
     if json:
-        typer.echo(table.json())
+        document = {**table.document(), "open": list(still_open)} if still_open else table.document()
+        typer.echo(canonical.text(document))
     elif csv or plain:
         typer.echo(table.csv() if csv else table.plain(), nl=False)
     elif polynomials:

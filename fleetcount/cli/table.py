@@ -73,7 +73,10 @@ def table(
         found = view.table if to is None else view.table.cut(to)
         if per_site:
             found = found.per_site()
-        options.give(found, json=as_json, csv=as_csv, plain=plain, polynomials=polynomials)
+        still_open = [reading.document() for reading in view.open]
+        options.give(
+            found, json=as_json, csv=as_csv, plain=plain, polynomials=polynomials, still_open=still_open
+        )
         if not as_json:
             for reading in view.open:
                 options.say(_open_line(reading))
@@ -101,5 +104,9 @@ def _series(store: Store, beginning: str, defined: Series | None) -> Series:
 
 
 def _open_line(reading: OpenReading) -> str:
+    from fleetcount.cli.screen import duration
+
     census = reading.census
-    return f"open reading to n={reading.reach}: {100 * census.share_done:.1f}% done, {census.units} units"
+    left = duration(reading.seconds_left)
+    done = f"{100 * census.share_done:.1f}% done"
+    return f"open reading to n={reading.reach}: {done}, {census.units} units, time left {left}"

@@ -9,20 +9,21 @@ from collections import deque
 from collections.abc import Iterator, Sequence
 
 from fleetcount.errors import FleetcountError, StoppedError, TrustError
-from fleetcount.fleet.core import MOST_UNITS, Bundle, Core, Pace, budget_for
+from fleetcount.fleet.core import BYTES_A_TALLY, MOST_UNITS, Bundle, Core, Pace, budget_for
 from fleetcount.fleet.crew import Crew
 from fleetcount.fleet.interrupt import StopFlag
 from fleetcount.fleet.planning import divide_roots
 from fleetcount.fleet.snapshot import Observer, Snapshot
 from fleetcount.fleet.work import HandBack, HandOut, Task
+from fleetcount.ledger.record import pack
 from fleetcount.ledger.states import State
-from fleetcount.ledger.store import Lease, Store, UnitRow, Verdict
+from fleetcount.ledger.store import Answer, Lease, Store, UnitRow, Verdict
 from fleetcount.methods.face import Forecast
 
 _TICK = 0.1
 _MOMENT = 0.25
 _PATIENCE = 2.0
-_RATE_WINDOW = 30.0
+_UNIT_BYTES = 300
 
 LEDGER_BYTES = 1e9
 """The size under which the ledger of one reading is to stay."""
@@ -49,7 +50,9 @@ class Coordinator:
         self._shown = 0.0
         self._arrived: deque[tuple[str, HandBack | Exception]] = deque()
         self._unbooked: list[Bundle] = []
-        self._recent: deque[tuple[float, int]] = deque()
+        self._ledger_bytes = ledger_bytes
+        self._bytes, self._tallies = 0, 0
+        self._machines: set[str] = set()
         self._seconds = 0.0
 
     def run(self) -> None:
@@ -70,6 +73,7 @@ class Coordinator:
                 max(1, self._crew.slots()),
                 0.1,
                 self._heed_stop,
+                most=max(1, int(self._ledger_bytes / (4 * BYTES_A_TALLY))),
             )
             self._look_again()
             while self._waiting or self._core.out:
@@ -134,6 +138,7 @@ class Coordinator:
                 self._take_lost(token, what)
 
     def _take_back(self, back: HandBack) -> None:
+        self._machines.add(back.machine)
         bundle = self._core.back(back.token, back.nodes, back.seconds)
         if bundle is None:
             return
@@ -164,7 +169,15 @@ class Coordinator:
         self._settled += len(kept)
         self._remaining = max(0.0, self._remaining - sum(kept))
         self._nodes, self._seconds = self._nodes + back.nodes, self._seconds + back.seconds
-        self._recent.append((time.monotonic(), back.nodes))
+        self._learn_sizes(accepted)
+
+    def _learn_sizes(self, accepted: Sequence[Answer]) -> None:
+        """Large tallies, as joint counts have, ask for longer bundles, so that the ledger keeps within its size."""
+        self._bytes += sum(len(pack(a.text)) + _UNIT_BYTES * (1 + len(a.expected)) for a in accepted)
+        self._tallies += len(accepted)
+        if self._tallies:
+            mean = self._bytes / self._tallies
+            self._core.budget = budget_for(self._forecast.seconds, self._ledger_bytes, mean)
 
     def _take_lost(self, token: str, error: Exception) -> None:
         again, failed = self._core.lost(token)
@@ -182,7 +195,8 @@ class Coordinator:
     ) -> list[UnitRow]:
         if not keys:
             return []
-        rows = self._store.hand_back(self._lease, self._task.reading, keys, token, failed, machine)
+        machines = max(1, len(self._machines))
+        rows = self._store.hand_back(self._lease, self._task.reading, keys, token, failed, machine, machines)
         self._waiting += sum(row.state is State.WAITING for row in rows)
         return rows
 
@@ -210,8 +224,6 @@ class Coordinator:
         if now - self._shown < _MOMENT and not at_once:
             return
         self._shown = now
-        while self._recent and now - self._recent[0][0] > _RATE_WINDOW:
-            self._recent.popleft()
         cores = self._crew.slots()
         self._observer.moment(
             Snapshot(

@@ -22,8 +22,10 @@ USUAL_SECONDS = 3.0
 MOST_SECONDS = 900.0
 MOST_UNITS = 400
 BYTES_A_TALLY = 2_500
-"""Stored size of a tally with its units, roughly; and a bundle leaves about so many tallies: """
+"""Stored size of a plain tally with its units, roughly: what is reckoned with before any has come back."""
+
 TALLIES_A_BUNDLE = 20
+"""So many tallies a bundle leaves, roughly."""
 
 DEATHS_TO_SUSPECT = 2
 DEATHS_TO_FAIL = 8
@@ -147,7 +149,7 @@ class Core:
             raise InternalError("a unit is out twice")
 
 
-def budget_for(core_seconds: float, ledger_bytes: float) -> float:
+def budget_for(core_seconds: float, ledger_bytes: float, tally_bytes: float = BYTES_A_TALLY) -> float:
     """Seconds of a bundle such that a count of that many seconds keeps its ledger within a size."""
-    bundles = ledger_bytes / (BYTES_A_TALLY * TALLIES_A_BUNDLE)
+    bundles = ledger_bytes / (tally_bytes * TALLIES_A_BUNDLE)
     return min(MOST_SECONDS, max(USUAL_SECONDS, core_seconds / bundles))

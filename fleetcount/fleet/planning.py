@@ -50,18 +50,20 @@ def divide_roots(
     cores: int,
     least_seconds: float,
     tick: Callable[[], None],
+    most: int = MOST_PLANNED,
 ) -> None:
     """Divide the largest waiting units, without counting, while they are too large to share out evenly.
 
     Args:
         least_seconds: no unit expected to take less is divided.
         tick: called between batches.
+        most: no more units than this, and `MOST_PLANNED`, are made.
     """
     method, lengths = registry.get(task.method), parse_lengths(task.lengths)
     rate = forecast.nodes / max(forecast.seconds, 1e-9)
     enough = max(forecast.nodes / (cores * UNITS_A_CORE), rate * least_seconds)
     planned = store.census(task.reading).units
-    while planned < MOST_PLANNED:
+    while planned < min(most, MOST_PLANNED):
         large = [unit for unit in store.waiting(task.reading, _BATCH) if unit.expected > enough]
         if not large:
             return

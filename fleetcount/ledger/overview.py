@@ -3,17 +3,14 @@
 from __future__ import annotations
 
 import json
-import time
 from dataclasses import dataclass
 from typing import Any
 
+from fleetcount.ledger.speed import nodes_a_second
 from fleetcount.ledger.states import State
 from fleetcount.ledger.store import Census, Holder, MachineRow, ReadingRow, SeriesRow, Store
 from fleetcount.ledger.tables import reach
 from fleetcount.series.definition import Series, from_canonical
-
-RECENT = 64
-_STALE_SECONDS = 120.0
 
 
 @dataclass(frozen=True)
@@ -118,16 +115,6 @@ def series_of(row: SeriesRow) -> Series:
 
 def _reading(store: Store, row: ReadingRow) -> ReadingView:
     census = store.census(row.reading)
-    rate = 0.0 if row.finished is not None else _rate(store, row.reading)
+    rate = 0.0 if row.finished is not None else nodes_a_second(store, row.reading)
     left = census.expected / rate if rate and not census.complete else None
     return ReadingView(row, census, rate, left)
-
-
-def _rate(store: Store, reading: str) -> float:
-    """Nodes a second over the tallies accepted last; 0 when the last one is old."""
-    recent = store.latest(reading, RECENT)
-    now = time.time_ns() // 1000
-    if len(recent) < 2 or now - recent[0].accepted > _STALE_SECONDS * 1e6:
-        return 0.0
-    span = max(recent[0].accepted - recent[-1].accepted, 1)
-    return sum(tally.nodes for tally in recent[:-1]) / (span / 1e6)

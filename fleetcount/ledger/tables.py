@@ -4,8 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 from fleetcount.errors import InputError, TrustError
+from fleetcount.ledger.speed import nodes_a_second
 from fleetcount.ledger.store import Census, Merged, ReadingRow, SeriesRow, Store
 from fleetcount.methods import registry
 from fleetcount.series.definition import Series
@@ -23,6 +25,17 @@ class OpenReading:
     reading: ReadingRow
     reach: int
     census: Census
+    rate: float
+
+    @property
+    def seconds_left(self) -> float | None:
+        """Seconds that the rest is expected to take, or None where nobody is counting it now."""
+        return self.census.expected / self.rate if self.rate and not self.census.complete else None
+
+    def document(self) -> dict[str, Any]:
+        """As JSON takes it."""
+        share = self.census.share_done
+        return {"reach": self.reach, "share_done": share, "seconds_left": self.seconds_left}
 
 
 @dataclass(frozen=True)
@@ -73,7 +86,10 @@ def view(store: Store, series: Series, so_far: bool = False) -> View:
     sums = tables[0][1] if tables else Tally()
     complete = final is not None and all(reach(row) <= final for row in unfinished)
     table = CoefficientTable(series, final, sums, series.divisor, complete, head, partial)
-    still_open = tuple(OpenReading(row, reach(row), store.census(row.reading)) for row in unfinished)
+    still_open = tuple(
+        OpenReading(row, reach(row), store.census(row.reading), nodes_a_second(store, row.reading))
+        for row in unfinished
+    )
     return View(table, still_open, len(done) + len(unfinished))
 
 

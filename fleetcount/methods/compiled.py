@@ -56,7 +56,9 @@ def kernel(
             with _filling(method):
                 made = factory(*traits)
                 example(made)
-                (folder(method) / _marker(name, traits)).touch()
+                marker = folder(method) / _marker(name, traits)
+                if not marker.exists():
+                    marker.touch()
             _ready[key] = made
             seconds_compiling[f"{name}{traits}"] = time.perf_counter() - began
         return _ready[key]

@@ -83,6 +83,15 @@ class Series:
         )
 
     @property
+    def directed(self) -> bool:
+        """Whether something names a direction, so that sites that are alike may still give different numbers."""
+        return (
+            len(self.lattice.sites) > 1
+            and not self.rule.closed
+            and (self.uses_up or any(s.name in ("steps", "span", "end") for s in self.statistics))
+        )
+
+    @property
     def columns(self) -> tuple[str, ...]:
         """Headings of a table: length, statistics, count, moments."""
         named = [column for s in self.statistics for column in s.columns(self.lattice)]
@@ -134,7 +143,7 @@ class Series:
         """One line for people: `square walk`, `dice walk from hub by contacts`."""
         written = self.written()
         words = [written["lattice"], written["object"]]
-        if self.start is not None and (self.walls or not all_alike(self.lattice)):
+        if self.start is not None and (self.walls or self.directed or not all_alike(self.lattice)):
             words.append(f"from {written['start']}")
         words += [f"to {written['end']}"] if self.end else []
         words += [f"where {' and '.join(written['region'])}"] if self.walls else []
@@ -171,9 +180,11 @@ def from_canonical(form: Mapping[str, Any], written: Mapping[str, Any]) -> Serie
             walls=tuple(Wall(tuple(wall), Fraction(bound)) for wall, bound in form["walls"]),
         )
         known = {*statistics.MEANINGS, *moments.MEANINGS}
-        unknown = {*(s.name for s in series.statistics), *series.moments} - known
+        named = {**{s[0]: s[1] for s in form["statistics"]}, **dict(form["moments"])}
+        versions = {**statistics.VERSIONS, **moments.VERSIONS}
+        unknown = {name for name, version in named.items() if name not in known or versions[name] != version}
         if unknown:
-            raise SeriesError(f"{min(unknown)} is not known here", where=name)
+            raise SeriesError(f"{min(unknown)} of that version is not known here", where=name)
     except (ArithmeticError, IndexError, KeyError, TypeError, ValueError) as error:
         raise SeriesError("not the canonical form of a series", where=name) from error
     if series.canonical() != form:

@@ -5,7 +5,7 @@ Sites are pairs of a site number and a cell. The compiled kernels are held again
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
@@ -98,21 +98,11 @@ def _visits(figure: Figure, statistic: Statistic) -> Iterator[int]:
 def _turns(figure: Figure, _: Statistic) -> Iterator[int]:
     steps = figure.steps
     pairs = zip(steps, steps[1:] + steps[:1] if figure.closed else steps[1:], strict=False)
-    yield sum(not same_direction(a, b) for a, b in pairs)
-
-
-def same_direction(a: Sequence[int], b: Sequence[int]) -> bool:
-    """Whether two vectors are positive multiples of each other."""
-    return parallel(a, b) and sum(x * y for x, y in zip(a, b, strict=True)) > 0
-
-
-def parallel(a: Sequence[int], b: Sequence[int]) -> bool:
-    """Whether two vectors are multiples of each other."""
-    return all(a[i] * b[j] == a[j] * b[i] for i, j in combinations(range(len(a)), 2))
+    yield sum(not forms.same_direction(a, b) for a, b in pairs)
 
 
 def _steps(figure: Figure, statistic: Statistic) -> Iterator[int]:
-    yield sum(parallel(step, statistic.direction) for step in figure.steps)
+    yield sum(forms.parallel(step, statistic.direction) for step in figure.steps)
 
 
 def _span(figure: Figure, statistic: Statistic) -> Iterator[int]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from fractions import Fraction
+from itertools import combinations
 
 from fleetcount.errors import SeriesError
 from fleetcount.lattice.model import Lattice
@@ -77,3 +78,13 @@ def dot(lattice: Lattice, a: Sequence[int], b: Sequence[int]) -> int:
     """The inner product of two vectors in units of 1 over (scale squared times metric_scale), if they are in units of
     1/scale."""
     return sum(x * g * y for x, row in zip(a, lattice.gram, strict=True) for g, y in zip(row, b, strict=True))
+
+
+def same_direction(a: Sequence[int], b: Sequence[int]) -> bool:
+    """Whether two vectors are positive multiples of each other."""
+    return parallel(a, b) and sum(x * y for x, y in zip(a, b, strict=True)) > 0
+
+
+def parallel(a: Sequence[int], b: Sequence[int]) -> bool:
+    """Whether two vectors are multiples of each other."""
+    return all(a[i] * b[j] == a[j] * b[i] for i, j in combinations(range(len(a)), 2))

@@ -74,16 +74,24 @@ def wall(lattice: Lattice, form: Form, least: Fraction | int) -> Wall:
 
 
 def region(lattice: Lattice, walls: Iterable[Wall]) -> tuple[Wall, ...]:
-    """The walls sorted, of parallel ones the strictest."""
+    """The walls in their order, of parallel ones the strictest.
+
+    The order is that of the forms, the greatest first: so wall 1 of a slab is the lower one, and the first walls of a
+    box are those at 0.
+    """
     strictest: dict[Form, Fraction] = {}
     for one in walls:
         strictest[one.form] = max(one.bound, strictest.get(one.form, one.bound))
-    return tuple(sorted(Wall(form, bound) for form, bound in strictest.items()))
+    return _ordered(Wall(form, bound) for form, bound in strictest.items())
 
 
 def moved(walls: Iterable[Wall], cell: Cell) -> tuple[Wall, ...]:
     """The walls as seen from another cell."""
-    return tuple(sorted(Wall(w.form, w.bound - sum(map(operator.mul, w.form, cell))) for w in walls))
+    return _ordered(Wall(w.form, w.bound - sum(map(operator.mul, w.form, cell))) for w in walls)
+
+
+def _ordered(walls: Iterable[Wall]) -> tuple[Wall, ...]:
+    return tuple(sorted(walls, key=lambda w: [-f for f in w.form]))
 
 
 def settled(lattice: Lattice, walls: Sequence[Wall]) -> tuple[Wall, ...]:
@@ -93,7 +101,7 @@ def settled(lattice: Lattice, walls: Sequence[Wall]) -> tuple[Wall, ...]:
     """
     rows = [[w.form[axis] for w in walls] for axis in range(lattice.periods)]
     bounds = [w.bound for w in walls]
-    for column in reversed(range(len(walls))):
+    for column in range(len(walls)):
         step = _step_along(rows, column)
         times = bounds[column] // step[column] if step else 0
         bounds = [b - times * s for b, s in zip(bounds, step, strict=True)] if step else bounds

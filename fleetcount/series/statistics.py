@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import difflib
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from fleetcount.errors import SeriesError
 from fleetcount.lattice.model import Lattice
-from fleetcount.series.forms import Form, parse_vector
+from fleetcount.series.forms import Form, parse_vector, same_direction
 
 if TYPE_CHECKING:
     from fleetcount.series.objects import CountedObject
@@ -17,7 +18,8 @@ if TYPE_CHECKING:
 
 MEANINGS = {
     "contacts": "pairs of visited sites that the lattice joins (in either sense) and the object does not",
-    "visits": "visited sites other than the start in the surface of wall 1; visits:K wall K, visits:any all walls; "
+    "visits": "visited sites other than the start in the surface of wall 1; visits:K wall K "
+    "(by their forms, the greatest first: wall 1 of a slab is the lower one), visits:any all walls; "
     "for polygons all sites count",
     "turns": "interior positions whose two step vectors are not positive multiples of each other; cyclic for polygons",
     "steps": "steps:1,0 - steps along a direction given in cell coordinates, in either sense",
@@ -68,7 +70,7 @@ def parse(text: str, lattice: Lattice) -> Statistic:
     if name in ("steps", "span"):
         return Statistic(name, direction=_sense(parse_vector(argument, lattice, f"--by {text}")))
     if name == "visits":
-        if argument not in ("", "any") and not argument.isdecimal():
+        if argument not in ("", "any") and not re.fullmatch("[1-9][0-9]?", argument, re.ASCII):
             raise SeriesError(
                 f"{argument!r} is no wall", where=f"--by {text}", mend="write visits:2 or visits:any"
             )
@@ -114,15 +116,8 @@ def _area_refusal(lattice: Lattice, rule: CountedObject) -> str | None:
 def _always_turns(lattice: Lattice) -> bool:
     """Whether no step can be followed by one in its own direction."""
     return not any(
-        _same_direction(lattice.step(a), lattice.step(b))
-        for a in lattice.arcs
-        for b in lattice.arms[a.target]
+        same_direction(lattice.step(a), lattice.step(b)) for a in lattice.arcs for b in lattice.arms[a.target]
     )
-
-
-def _same_direction(a: Sequence[int], b: Sequence[int]) -> bool:
-    parallel = all(x * v == y * u for (x, u) in zip(a, b, strict=True) for (y, v) in zip(a, b, strict=True))
-    return parallel and sum(x * y for x, y in zip(a, b, strict=True)) > 0
 
 
 def _edges_cross(lattice: Lattice) -> bool:

@@ -98,8 +98,17 @@ class CoefficientTable:
         return replace(self, final=to, sums=kept, so_far=None)
 
     def per_site(self) -> CoefficientTable:
-        """The same numbers with the divisor that makes them the number per site instead of per cell."""
-        return replace(self, divisor=len(self.series.lattice.sites)) if self.series.rule.closed else self
+        """The same numbers with the divisor that makes them the number per site instead of per cell.
+
+        Raises:
+            InputError: a closed object in a region.
+        """
+        series = self.series
+        if series.rule.closed and series.walls:
+            raise InputError(
+                "in a region nothing is counted per cell", where="--per-site", mend="leave it out"
+            )
+        return replace(self, divisor=len(series.lattice.sites)) if series.rule.closed else self
 
     def _reach(self) -> str:
         return "nothing" if self.final is None else f"lengths {self.least} to {self.final}"

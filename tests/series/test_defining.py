@@ -162,6 +162,7 @@ REFUSED: tuple[tuple[str, str, dict[str, Any], str], ...] = (
     ("square", "walk", {"by": ["visits"]}, "visits need a wall: give a --region"),
     ("square", "walk", {"by": ["visits:2"], "region_name": "half"}, "there are only 1 walls"),
     ("square", "walk", {"by": ["visits:x"], "region_name": "half"}, "'x' is no wall"),
+    ("square", "walk", {"by": ["visits:0"], "region_name": "half"}, "'0' is no wall"),
     ("square", "walk", {"by": ["visits:-1"], "region_name": "half"}, "'-1' is no wall"),
     ("square", "walk", {"by": ["revisits"]}, "a walk passes no site twice"),
     ("square", "polygon", {"by": ["height"]}, "a polygon has no end"),
@@ -213,3 +214,12 @@ def test_what_makes_no_sense_is_refused(name: str, kind: str, words: dict[str, A
         define(catalogue.find(name), kind, **words)
     assert reason in str(error.value)
     assert "\n" not in str(error.value)
+
+
+def test_walls_are_numbered_as_people_expect() -> None:
+    """Wall 1 of a slab is the lower one, and the first walls of a box are those at 0."""
+    square = catalogue.find("square")
+    slab = define(square, "walk", region_name="slab:3").walls
+    assert [(w.form, w.bound) for w in slab] == [((0, 1), 0), ((0, -1), -3)]
+    box = define(square, "walk", region_name="box:2,5").walls
+    assert [w.form for w in box] == [(1, 0), (0, 1), (0, -1), (-1, 0)]

@@ -70,8 +70,8 @@ def test_a_file_with_every_key(here: Path) -> None:
     series = written.series()
     assert series.columns == ("n", "contacts", "visits", "count", "end2")
     assert [w.text() for w in series.walls] == [
-        "-1,0 >= -7",
         "0,1 >= 0",
+        "-1,0 >= -7",
     ]  # 2y >= 1 is y >= 1, where the start is
 
 

@@ -125,7 +125,9 @@ def test_walls_hold_what_the_inequalities_hold(
     if walls is None:
         assert not any(map(inside, sites.values()))
         return
-    assert list(walls) == sorted(walls) and len({w.form for w in walls}) == len(walls)
+    assert [w.form for w in walls] == sorted((w.form for w in walls), reverse=True) and len(
+        {w.form for w in walls}
+    ) == len(walls)
     kinds = np.array([site for site, _ in sites])
     cells = np.array([cell for _, cell in sites]).reshape(len(sites), lattice.periods)
     together = contains_all(lattice, walls)(kinds, cells)

@@ -13,7 +13,7 @@ from fleetcount.lattice.model import Lattice
 from fleetcount.lattice.patch import Patch
 from fleetcount.methods.direct import refined_kernel as rk
 from fleetcount.methods.direct.end_orbits import end_orbits
-from fleetcount.series import figure, forms
+from fleetcount.series import forms
 from fleetcount.series.area import area_unit
 from fleetcount.series.definition import Series
 from fleetcount.series.region import Wall, excesses
@@ -68,7 +68,7 @@ def measure(
     if one.name == "visits":
         return _visits(series, one, patch, walls, top)
     if one.name == "steps":
-        along = [[figure.parallel(lattice.step(a), one.direction) for a in arms] for arms in lattice.arms]
+        along = [[forms.parallel(lattice.step(a), one.direction) for a in arms] for arms in lattice.arms]
         return Measure(top + 1, gain=by_arm(along, patch))
     if one.name == "area":
         return _area(lattice, patch, positions, top)

@@ -21,7 +21,7 @@ from fleetcount.methods.direct.measures import SORTS, Measure, layers, measure
 from fleetcount.methods.direct.refined_stack import RefinedMarks, RefinedStack
 from fleetcount.methods.direct.symmetry_states import SymmetryStates, states_of
 from fleetcount.series.definition import Series
-from fleetcount.series.figure import same_direction
+from fleetcount.series.forms import same_direction
 from fleetcount.series.region import moved
 
 Array = np.ndarray[Any, np.dtype[Any]]
