@@ -21,7 +21,7 @@ from typing import NamedTuple
 
 from fleetcount.lattice import catalogue
 from fleetcount.methods import registry
-from fleetcount.methods.face import Word
+from fleetcount.methods.direct.method import Endless
 from fleetcount.series.defining import define
 from fleetcount.series.tally import Tally
 
@@ -43,13 +43,6 @@ CASES = (
 )
 
 Rows = dict[int, tuple[int, ...]]
-
-
-class Endless:
-    """A clock that never stops a count."""
-
-    def word(self) -> Word:
-        return Word.GO
 
 
 class Run(NamedTuple):

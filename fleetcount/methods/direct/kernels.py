@@ -12,7 +12,7 @@ All loops share one way of working. The stack of the depth-first search lies in 
 another arm stands for this one) and `onward[state, kind, arm]` the state after it; state 0 is: no symmetry left.
 
 Overflow: a node adds at most arms * arms * arms * weight to any sum, where weight never exceeds the order of the
-symmetry group. `search.SLICE_NODES` bounds the nodes of a call, and `search.check_bound` proves with these three
+symmetry group. `slices.SLICE_NODES` bounds the nodes of a call, and `search.check_bound` proves with these three
 numbers that no sum reaches 2**63.
 """
 
